@@ -1,0 +1,1 @@
+"""Estimators on arrays, one file each; every one returns a `Fit`."""

@@ -1,0 +1,1 @@
+"""Pieces of evidence, one module an exhibit: fits in, `Exhibit` out."""

@@ -1,0 +1,1 @@
+"""Ways of reading what a referee holds: tables, scripts, manuscripts."""

@@ -1,0 +1,1 @@
+"""Ways of writing a `Note`, one file a format, and the pictures."""
