@@ -1,0 +1,133 @@
+"""An exhibit as blocks of a note: its table in finished texts, its figures with alternative texts."""
+
+from collections.abc import Sequence
+from typing import assert_never
+
+from reviewkit.exhibit import BarFigure, BinnedFigure, Cell, Exhibit, FigureData, Interval, IntervalFigure
+from reviewkit.note import Figure, Table
+from reviewkit.wording import (
+    clean,
+    counted,
+    decimals_for,
+    estimate,
+    fixed,
+    interval,
+    number,
+    percent,
+    sentence,
+    significant,
+)
+
+NO_VALUE = "–"
+"""Stands in a cell that is empty."""
+
+_ERROR_COLUMNS = ("std_error", "standard error", "error")
+_MOST_ROWS_IN_WORDS = 12
+
+
+def exhibit_blocks(exhibit: Exhibit, place: int) -> tuple[Table | Figure, ...]:
+    """The blocks of the exhibit that is number `place` of its note."""
+    table = exhibit_table(exhibit, f"Exhibit {place}. ")
+    figures = tuple(_figure(figure, exhibit, place) for figure in exhibit.figures)
+    return (table, *figures) if table.rows else figures
+
+
+def exhibit_table(exhibit: Exhibit, prefix: str = "") -> Table:
+    """The exhibit's table with every cell as text; `prefix` goes before the caption."""
+    rows = tuple(_row(exhibit.columns, row) for row in exhibit.rows)
+    columns = tuple(_heading(name) for name in exhibit.columns)
+    return Table(sentence(prefix + clean(exhibit.title)), columns, rows, sentence(clean(exhibit.sentence)))
+
+
+def alt_text(figure: FigureData, title: str) -> str:
+    """What the figure shows, in words and numbers, for readers who do not see it."""
+    lead = sentence(clean(title))
+    match figure:
+        case IntervalFigure():
+            return f"{lead} {_intervals_in_words(figure)}"
+        case BinnedFigure():
+            return f"{lead} {_bins_in_words(figure)}"
+        case BarFigure():
+            shown = "; ".join(f"{clean(label)} {percent(height)}" for label, height in figure.bars)
+            return f"{lead} Bars, {clean(figure.y_label)} by {clean(figure.x_label)}: {sentence(shown)}"
+        case _:
+            assert_never(figure)
+
+
+# --- cells ------------------------------------------------------------------------------------------------------
+
+
+def _row(columns: Sequence[str], row: Sequence[Cell]) -> tuple[str, ...]:
+    errors = [cell for name, cell in zip(columns, row, strict=True) if name.lower() in _ERROR_COLUMNS]
+    error = errors[0] if len(errors) == 1 and isinstance(errors[0], float) and errors[0] > 0 else None
+    return tuple(_cell(name, cell, error) for name, cell in zip(columns, row, strict=True))
+
+
+def _cell(column: str, cell: Cell, error: float | None) -> str:
+    """One cell: estimates follow the digits of their row's standard error."""
+    name = column.lower()
+    if cell is None or cell == "" or cell != cell:  # noqa: PLR0124 – not a number
+        return NO_VALUE
+    if isinstance(cell, str):
+        return clean(cell)
+    if isinstance(cell, int):
+        return fixed(cell, 0)
+    if "percent" in name or name.endswith("%"):
+        return percent(cell).removesuffix(" %")
+    if name == "p" or name.startswith(("p_", "p value")):
+        return "< 0.001" if cell < 0.001 else fixed(cell, 3)
+    if error is not None and name not in ("statistic", "df", "t", "z"):
+        return _with_error(cell, error)
+    return fixed(cell, 2) if name in ("statistic", "t", "z") else number(cell)
+
+
+def _with_error(cell: float, error: float) -> str:
+    return significant(cell, 3) if error < 1e-6 else fixed(cell, decimals_for(error, 2))
+
+
+def _heading(column: str) -> str:
+    words = clean(column).replace("_", " ").strip()
+    return words if len(words) < 2 or words[1].isupper() else words[:1].upper() + words[1:]
+
+
+# --- figures in words -------------------------------------------------------------------------------------------
+
+
+def _figure(figure: FigureData, exhibit: Exhibit, place: int) -> Figure:
+    return Figure(sentence(f"Exhibit {place}, drawn: {clean(exhibit.title)}"), alt_text(figure, exhibit.title), figure)
+
+
+def _intervals_in_words(figure: IntervalFigure) -> str:
+    rows = figure.rows
+    if len(rows) > _MOST_ROWS_IN_WORDS:
+        ordered = sorted(rows, key=lambda row: row.estimate)
+        rows = (figure.rows[0], figure.rows[-1], ordered[0], ordered[-1])
+        lead = f"{counted(len(figure.rows), 'estimate')} with intervals; first, last, smallest and largest of"
+    else:
+        lead = "Estimates with intervals of"
+    shown = "; ".join(_interval_in_words(row) for row in rows)
+    line = "" if figure.reference is None else f" A vertical line stands at {number(figure.reference)}."
+    return f"{lead} {clean(figure.x_label)}: {sentence(shown)}{line}"
+
+
+def _interval_in_words(row: Interval) -> str:
+    label = clean(row.label)
+    if row.low is None or row.high is None:
+        return f"{label} {estimate(row.estimate)}, no interval"
+    decimals = decimals_for((row.high - row.low) / 4, 2)
+    return f"{label} {fixed(row.estimate, decimals)} ({interval(row.low, row.high)})"
+
+
+def _bins_in_words(figure: BinnedFigure) -> str:
+    y_label, x_label = clean(figure.y_label), clean(figure.x_label)
+    if not figure.bins:
+        return f"Binned means of {y_label} against {x_label}: too few rows to draw any."
+    ordered = sorted(figure.bins, key=lambda one: one.middle)
+    first, last, low, high = figure.bins[0], figure.bins[-1], ordered[0], ordered[-1]
+    shown = "; ".join(
+        f"{name} {estimate(one.middle)} at {estimate(one.x)}"
+        for name, one in (("first", first), ("last", last), ("lowest", low), ("highest", high))
+    )
+    line = "" if figure.line is None else f" A straight line has the slope {estimate(figure.line[1])}."
+    bins = counted(len(figure.bins), "bin")
+    return f"Binned means of {y_label} against {x_label}, {bins} with their 10 to 90 % ranges: {sentence(shown)}{line}"
