@@ -4,7 +4,8 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from enum import StrEnum
 
-from reviewkit.conditions import Condition, Lookup
+from reviewkit.clauses import Lookup
+from reviewkit.conditions import Condition
 from reviewkit.facts import STUDY, Fact, Facts, Value
 from reviewkit.references import Citation, Work
 from reviewkit.refusals import Refusal
@@ -48,7 +49,7 @@ class Example:
 
 @dataclass(frozen=True, slots=True)
 class Rule:
-    """One point that may be raised; its texts are templates for `conditions.render`."""
+    """One point that may be raised; its texts are templates for `placeholders.render`."""
 
     name: str
     topic: str

@@ -143,7 +143,7 @@ class Vocabulary:
 
     def __getitem__(self, name: str) -> FactDefinition:
         if name not in self._by_name:
-            raise Refusal(name, "there is no fact of that name", remedy=_closest(name, self._by_name))
+            raise Refusal(name, "there is no fact of that name", remedy=closest(name, self._by_name))
         return self._by_name[name]
 
     def adding(self, more: Iterable[FactDefinition]) -> "Vocabulary":
@@ -152,7 +152,8 @@ class Vocabulary:
         return replace(self, definitions=tuple(merged.values()))
 
 
-def _closest(name: str, names: Iterable[str]) -> str:
+def closest(name: str, names: Iterable[str]) -> str:
+    """Up to three similar names, as a remedy for a misspelt one."""
     from difflib import get_close_matches
 
     close = get_close_matches(name, list(names), n=3, cutoff=0.5)
