@@ -1,0 +1,44 @@
+"""From an invented manuscript and its data to the finished notes: `python3 demo/run.py`."""
+
+from __future__ import annotations
+
+import subprocess
+import sys
+import time
+from pathlib import Path
+
+ROOT = Path(__file__).resolve().parent.parent
+sys.path.insert(0, str(ROOT / ".ci"))
+
+from environment import quiet_variables, ready_python  # noqa: E402
+
+NOTES = Path("reviewkit-demo")
+
+
+def main() -> int:
+    """Set up, run `reviewkit demo`, say where the notes are and what to type for one's own paper."""
+    python = ready_python(ROOT / ".demo-env", [])
+    start = time.monotonic()
+    command = [str(python), "-m", "reviewkit", "demo", str(NOTES)]
+    status = subprocess.run(command, env=quiet_variables(), check=False).returncode
+    if status != 0:
+        return status
+    print(f"\nDone in {time.monotonic() - start:.0f} s. The notes:")
+    for note in sorted(NOTES.rglob("to-*.docx")):
+        print(f"  {note}")
+    print("\nFor a paper of your own, with its data beside it:")
+    print(f"  {_program(python)} begin my-review --manuscript paper.docx --data data.csv")
+    return 0
+
+
+def _program(python: Path) -> Path:
+    """The installed command, as one would type it from here."""
+    program = python.with_name("reviewkit.exe" if python.suffix == ".exe" else "reviewkit")
+    try:
+        return Path(program).relative_to(Path.cwd())
+    except ValueError:
+        return program
+
+
+if __name__ == "__main__":
+    sys.exit(main())
