@@ -74,7 +74,7 @@ def _works(python: Path) -> bool:
 
 
 def _install(python: Path, what: list[str]) -> None:
-    command = [str(python), "-m", "pip", "install", "--quiet", "--no-input", "--disable-pip-version-check", *what]
+    command = [str(python), "-m", "pip", "install", "-qq", "--no-input", "--disable-pip-version-check", *what]
     _run(command, "installing failed; is there a way to the package index?")
 
 
