@@ -23,11 +23,8 @@ def main() -> int:
     status = subprocess.run(command, env=quiet_variables(), check=False).returncode
     if status != 0:
         return status
-    print(f"\nDone in {time.monotonic() - start:.0f} s. The notes:")
-    for note in sorted(NOTES.rglob("to-*.docx")):
-        print(f"  {note}")
-    print("\nFor a paper of your own, with its data beside it:")
-    print(f"  {_program(python)} begin my-review --manuscript paper.docx --data data.csv")
+    print(f"Done in {time.monotonic() - start:.0f} s. From this folder, the line for a paper of your own is:")
+    print(f"\n  {_program(python)} begin my-review --manuscript paper.docx --data data.csv")
     return 0
 
 

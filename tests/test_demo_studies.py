@@ -149,3 +149,19 @@ def test_a_study_names_its_files_and_they_are_there(study):
 
 def test_the_shipped_demo_is_small():
     assert sum(each.stat().st_size for each in DEMO.rglob("*") if "pictures" not in each.parts) < 1_000_000
+
+
+def test_the_referees_answers_repeat_what_the_papers_print():
+    for study, row in (("drop-off-bays", 2), ("lending-desks", 1)):
+        answers = tomllib.loads((DEMO / study / "answers.toml").read_text(encoding="utf-8"))["claim"]["main"]["claim"]
+        text, table = paragraphs_and_table(study)
+        assert answers["coefficient"]["value"] == table[1][row].rstrip("*")
+        assert f"({answers['std_error']['value']})" == table[2][row]
+        assert f"by {answers['percent']['value'].lstrip('-')} percent" in text[2]
+
+
+def test_the_referees_specification_repeats_the_printed_table():
+    answers = tomllib.loads((DEMO / "drop-off-bays" / "answers.toml").read_text(encoding="utf-8"))
+    printed, table = answers["specification"]["printed"], paragraphs_and_table("drop-off-bays")[1]
+    assert printed["terms"]["bay"] == {"estimate": table[1][2].rstrip("*"), "std_error": table[2][2].strip("()")}
+    assert printed["n"] == next(row[2] for row in table if row[0] == "N")
