@@ -12,20 +12,26 @@ sys.path.insert(0, str(ROOT / ".ci"))
 
 from environment import quiet_variables, ready_python  # noqa: E402
 
-NOTES = Path("reviewkit-demo")
+NOTES = "reviewkit-demo"
 
 
 def main() -> int:
     """Set up, run `reviewkit demo`, say where the notes are and what to type for one's own paper."""
     python = ready_python(ROOT / ".demo-env", [])
     start = time.monotonic()
-    command = [str(python), "-m", "reviewkit", "demo", str(NOTES)]
+    command = [str(python), "-m", "reviewkit", "demo", _free_folder()]
     status = subprocess.run(command, env=quiet_variables(), check=False).returncode
     if status != 0:
         return status
     print(f"Done in {time.monotonic() - start:.0f} s. From this folder, the line for a paper of your own is:")
     print(f"\n  {_program(python)} begin my-review --manuscript paper.docx --data data.csv")
     return 0
+
+
+def _free_folder() -> str:
+    """A folder that does not exist yet, so that nothing of an earlier run is written over."""
+    names = (NOTES, *(f"{NOTES}-{number}" for number in range(2, 1000)))
+    return next(name for name in names if not Path(name).exists())
 
 
 def _program(python: Path) -> Path:
