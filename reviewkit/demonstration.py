@@ -1,0 +1,51 @@
+"""Runs the invented studies that come with the program the way a referee would, from reading to note."""
+
+import shutil
+import tomllib
+from collections.abc import Callable
+from pathlib import Path
+
+from reviewkit import casefolder, drafting, review, shipped, unattended
+from reviewkit.casefolder import Input
+from reviewkit.refusals import Refusal
+
+STUDY = "study.toml"
+
+
+def run(folder: Path, say: Callable[[str], None]) -> tuple[Path, ...]:
+    """Begin, interview, refit and draft for each study below a new folder; the notes that were written."""
+    studies = sorted(each.parent for each in shipped.demo_folder().glob(f"*/{STUDY}"))
+    if folder.exists() and (not folder.is_dir() or any(folder.iterdir())):
+        raise Refusal(
+            folder.name, "this exists already", "a new or an empty folder", "Name another: `reviewkit demo DIR`"
+        )
+    return tuple(path for study in studies for path in _run_study(study, folder / study.name, say))
+
+
+def _run_study(study: Path, folder: Path, say: Callable[[str], None]) -> tuple[Path, ...]:
+    described = tomllib.loads((study / STUDY).read_text("utf-8"))
+    materials, case_folder = folder / "received", folder / "case"
+    materials.mkdir(parents=True)
+    names = [described["manuscript"], described["answers"], *described.get("data", [])]
+    for name in names:
+        shutil.copyfile(study / name, materials / name)
+    say(f"{study.name}: begin, with {', '.join(name for name in names if name != described['answers'])}")
+    given = {Input.MANUSCRIPT: materials / described["manuscript"]}
+    if described.get("data"):
+        given[Input.DATA] = materials / described["data"][0]
+    case, _ = review.begin(case_folder, given)
+    case, said = review.read_inputs(case)
+    for line in said:
+        say(f"{study.name}: {line}")
+    return _answer_and_draft(case, materials / described["answers"], study.name, say)
+
+
+def _answer_and_draft(
+    case: casefolder.CaseFolder, answers: Path, name: str, say: Callable[[str], None]
+) -> tuple[Path, ...]:
+    with casefolder.working_in(case):
+        say(f"{name}: interview, {unattended.take_answers(case, answers)} answers from {answers.name}")
+        if review.specification_of(case) is not None:
+            review.refit(case, progress=lambda text: say(f"{name}: {text} …"))
+    say(f"{name}: draft")
+    return tuple(path for path, _ in drafting.draft(case.path))
