@@ -329,7 +329,9 @@ class _Parser:
         if name not in FUNCTIONS:
             lag = name.lower() in ("lag", "l", "shift")
             reason = "lags need the data's order, which a specification does not hold; make a column" if lag else ""
-            raise Refusal(self.where, f"`{name}()` is not known here", ", ".join(f"{each}()" for each in FUNCTIONS), reason)
+            raise Refusal(
+                self.where, f"`{name}()` is not known here", ", ".join(f"{each}()" for each in FUNCTIONS), reason
+            )
         self.deeper()
         node = Apply(name, self.sum())
         self.need(")")

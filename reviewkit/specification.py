@@ -185,6 +185,7 @@ def specification_from(values: Mapping[str, Any], where: str) -> Specification:
     row_condition = model.text("where")
     alternative = table.table("alternative").choice("estimator", Estimator)
     printed = table.table("printed")
+    _check_exposure(table.table("outcome"), model)
     return Specification(
         data=table.required("data"),
         name=table.text("name") or "main",
@@ -347,6 +348,17 @@ def _outcome(table: _Table) -> Outcome:
         replacement=replacement,
         per_exposure=table.choice("per_exposure", PerExposure) or PerExposure.NO,
     )
+
+
+def _check_exposure(outcome: _Table, model: _Table) -> None:
+    transform = outcome.choice("transform", Transform) or Transform.NONE
+    if model.text("exposure") and transform is not Transform.NONE and "per_exposure" not in outcome.values:
+        raise Refusal(
+            outcome.place("per_exposure"),
+            "with an exposure and a transformed outcome this must be said",
+            ", ".join(PerExposure),
+            "Say whether the outcome was divided by the exposure, and whether before or after a constant was added",
+        )
 
 
 def _weights(table: _Table) -> Weights | None:

@@ -1,0 +1,111 @@
+"""The comparison of the two models: numbers on one scale, their difference, and what follows."""
+
+import math
+
+from reviewkit.comparison import Comparison, Kind, Verdict
+from reviewkit.exhibit import Cell, Exhibit, Interval, IntervalFigure
+from reviewkit.implied import Scale
+from reviewkit.wording import estimate, interval, percent
+
+WIDEST_BOUND = 50.0
+"""Per cent beyond which a bound says little; common practice, no source."""
+
+SCALE_WORDS = {
+    Scale.COEFFICIENT: "coefficient",
+    Scale.LOG_RATIO: "log ratio of means",
+    Scale.SEMI_ELASTICITY: "average semi-elasticity of the mean",
+    Scale.ELASTICITY: "elasticity of the mean",
+    Scale.LEVEL: "difference of means in the outcome's unit",
+}
+COLUMNS = (
+    "term", "submission's side", "rows", "scale", "submitted", "submitted low", "submitted high", "alternative",
+    "alternative low", "alternative high", "difference", "difference low", "difference high", "conclusion",
+    "agree within percent", "differ by at least percent",
+)  # fmt: skip
+
+
+def comparison_exhibit(comparisons: tuple[Comparison, ...], level: float) -> Exhibit:
+    """Each comparison as a row, with a picture of both numbers and their intervals."""
+    shown = tuple(each for each in comparisons if each.submitted is not None)
+    return Exhibit(
+        "comparison",
+        f"The two models on one scale, with {100 * level:.0f} % intervals",
+        COLUMNS,
+        tuple(_row(each) for each in comparisons),
+        " ".join(comparison_sentence(each) for each in comparisons[:4]),
+        tuple(_figure(scale, shown) for scale in dict.fromkeys(each.scale for each in shown if each.scale)),
+    )
+
+
+def _row(each: Comparison) -> tuple[Cell, ...]:
+    return (
+        each.term,
+        "model taken at its word" if each.kind is Kind.MODEL else "coefficient as read",
+        "same rows" if each.rows == "common" else "each model's own rows",
+        SCALE_WORDS[each.scale] if each.scale else None,
+        each.submitted,
+        *(each.submitted_interval or (None, None)),
+        each.alternative,
+        *(each.alternative_interval or (None, None)),
+        each.difference,
+        *(each.interval or (None, None)),
+        each.conclusion or each.why,
+        each.agree_within_percent,
+        each.differ_by_at_least_percent,
+    )
+
+
+def _figure(scale: Scale, comparisons: tuple[Comparison, ...]) -> IntervalFigure:
+    rows: list[Interval] = []
+    for each in comparisons:
+        if each.scale is not scale or each.submitted is None or each.alternative is None:
+            continue
+        side = "submitted" if each.kind is Kind.MODEL else "as read"
+        own = "" if each.rows == "common" else ", own rows"
+        for name, value, ends in (
+            (f"{each.term}: {side}{own}", each.submitted, each.submitted_interval),
+            (f"{each.term}: alternative{own}", each.alternative, each.alternative_interval),
+        ):
+            low, high = ends or (None, None)
+            rows.append(Interval(name, value, low, high))
+    distinct = tuple({(row.label, row.estimate): row for row in rows}.values())
+    return IntervalFigure(SCALE_WORDS[scale], distinct)
+
+
+def comparison_sentence(each: Comparison) -> str:
+    """What the numbers of one comparison say, with the bound; never that the two agree without it."""
+    if each.submitted is None or each.alternative is None or each.scale is None:
+        return f"{each.term}: no comparison, since {each.why}."
+    side = "the submitted model implies" if each.kind is Kind.MODEL else "the coefficient, as read, says"
+    told = f"{each.term}: {side} {_told(each, each.submitted, each.submitted_interval)}, "
+    told += f"the alternative {_told(each, each.alternative, each.alternative_interval)}"
+    return f"{told}; {verdict_words(each)}."
+
+
+def verdict_words(each: Comparison) -> str:
+    """The conclusion in words, with the bounds that the data put on the difference."""
+    if each.conclusion is None:
+        return f"no conclusion is drawn: {each.why}"
+    bound, least = each.agree_within_percent, each.differ_by_at_least_percent
+    if each.conclusion is Verdict.AGREES and bound is not None:
+        return f"they agree within {percent(bound)}"
+    if each.excludes_zero and least is not None:
+        above = f"between {percent(least)} and {percent(bound)}" if bound is not None else f"at least {percent(least)}"
+        words = f"they differ, by an amount that the data put {above if bound is not None else 'at ' + above}"
+        words += " of the submitted number"
+    elif bound is not None and bound <= WIDEST_BOUND:
+        words = f"we found no sign of a difference; the data bound it at {percent(bound)} of the submitted number"
+    else:
+        words = "we found no sign of a difference, but the data say little about it"
+    return f"{words} ({each.why})" if each.why else words
+
+
+def _told(each: Comparison, value: float, ends: tuple[float, float] | None) -> str:
+    """The number with its interval: in per cent for a log ratio of means."""
+    low, high = ends or (None, None)
+    if (each.scale is Scale.LOG_RATIO or each.coefficient_in_percent) and max(
+        map(abs, (value, low or 0.0, high or 0.0))
+    ) < 20:
+        inner = interval(*(None if end is None else 100 * math.expm1(end) for end in (low, high)), "%")
+        return f"{percent(100 * math.expm1(value))} ({inner})"
+    return f"{estimate(value)} ({interval(low, high)})"

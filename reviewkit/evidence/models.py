@@ -1,0 +1,60 @@
+"""Both models side by side, with how the submitted one agrees with the print."""
+
+from reviewkit.exhibit import Cell, Exhibit
+from reviewkit.model_table import Agreement, ModelTable, errors_text
+from reviewkit.wording import joined, number
+
+MOST_TERMS = 40
+"""Terms shown; more are counted."""
+
+
+def models_exhibit(
+    submitted: ModelTable, alternative: ModelTable | None, agreement: tuple[Agreement, ...], first: tuple[str, ...]
+) -> Exhibit:
+    """Terms with estimates and errors of both models, those in `first` before the others."""
+    names = [*first, *(row.name for row in submitted.terms if row.name not in first)]
+    rows = tuple(_row(name, submitted, alternative) for name in names[:MOST_TERMS])
+    left = len(names) - len(rows)
+    return Exhibit(
+        "models",
+        "The submitted model and the alternative",
+        ("term", "submitted", "submitted error", "alternative", "alternative error"),
+        rows,
+        _sentence(submitted, alternative, agreement) + (f" {left} further terms are not shown." if left > 0 else ""),
+    )
+
+
+def _row(name: str, submitted: ModelTable, alternative: ModelTable | None) -> tuple[Cell, ...]:
+    cells: list[Cell] = [name]
+    for table in (submitted, alternative):
+        row = table.term(name) if table else None
+        cells += [None, None] if row is None else [row.estimate, row.std_error]
+    return tuple(cells)
+
+
+def _sentence(submitted: ModelTable, alternative: ModelTable | None, agreement: tuple[Agreement, ...]) -> str:
+    errors = errors_text(submitted.errors, submitted.clusters)
+    parts = [f"Submitted: least squares on {submitted.outcome}, {number(submitted.observations)} observations"]
+    if submitted.estimator != "ols":
+        parts = [
+            f"Submitted: {submitted.estimator} on {submitted.outcome}, {number(submitted.observations)} observations"
+        ]
+    if alternative:
+        parts.append(
+            f"alternative: Poisson quasi-maximum likelihood on {alternative.outcome}, "
+            f"{number(alternative.observations)} observations"
+        )
+    return f"{'; '.join(parts)}; errors {errors}. {agreement_sentence(agreement)}".strip()
+
+
+def agreement_sentence(agreement: tuple[Agreement, ...]) -> str:
+    """How the refit meets the print, in one sentence; empty where nothing was printed."""
+    met, missed = [], []
+    for each in agreement:
+        for what, holds in (("estimate", each.estimate), ("error", each.std_error)):
+            if holds is not None:
+                under = f" (met with {each.error_under})" if what == "error" and each.error_under else ""
+                (met if holds else missed).append(f"{what} of {each.term}{under}")
+    parts = [f"to the printed digits: {joined(met)}"] if met else []
+    parts += [f"not to the printed digits: {joined(missed)}"] if missed else []
+    return f"Met {'; '.join(parts)}." if met else (f"Met {parts[0]}." if parts else "")

@@ -1,0 +1,92 @@
+"""Sample and outcome: which rows are used, and what the untransformed outcome looks like."""
+
+import numpy as np
+import numpy.typing as npt
+
+from reviewkit.exhibit import BarFigure, Cell, Exhibit
+from reviewkit.model_table import ModelTable
+from reviewkit.wording import counted, joined, number, share
+
+Array = npt.NDArray[np.float64]
+
+FEWEST_IN_CLASS = 10
+"""Rows under which classes of the outcome are put together, so that no single row shows."""
+
+
+def sample_exhibit(table: ModelTable, label: str) -> Exhibit:
+    """Rows used and left out, zeros, distinct values and quartiles of the outcome; `label` names it with its unit."""
+    design = table.design
+    y = design.y
+    rows: list[tuple[Cell, ...]] = [("rows in the table", design.table_rows), ("rows used", design.rows)]
+    rows += [(f"left out: {why}", lost) for why, lost in table.dropped]
+    if design.multiplicity is not None:
+        rows.append(("observations (frequency weights)", float(design.observations)))
+    if table.clusters:
+        rows.append(("clusters", table.clusters))
+    zeros = float((y == 0).mean())
+    rows += [("zeros, percent", 100 * zeros), ("distinct values", int(np.unique(y).size))]
+    rows += [("mean", float(y.mean())), ("standard deviation", float(y.std(ddof=1)) if y.size > 1 else None)]
+    rows += _quartiles("quartile", y)
+    if zeros:
+        rows += _quartiles("quartile of values above zero", y[y > 0])
+    return Exhibit(
+        "sample",
+        f"Sample and outcome: {label}",
+        ("measure", "value"),
+        tuple(rows),
+        _sentence(table, zeros),
+        (_distribution(y, label),),
+    )
+
+
+def _quartiles(name: str, y: Array) -> list[tuple[Cell, ...]]:
+    if y.size < 4 * FEWEST_IN_CLASS:
+        return []
+    first, second, third = np.quantile(y, (0.25, 0.5, 0.75))
+    return [
+        (f"first {name}", float(first)),
+        (name.replace("quartile", "median"), float(second)),
+        (f"third {name}", float(third)),
+    ]
+
+
+def _sentence(table: ModelTable, zeros: float) -> str:
+    design = table.design
+    left = joined([f"{counted(lost, 'row')} ({why})" for why, lost in table.dropped])
+    used = f"{counted(design.rows, 'row')} of {number(design.table_rows)} are used"
+    out = f"; left out: {left}" if left else ""
+    return f"{used}{out}; {share(zeros)} of the outcomes are zero."
+
+
+def _distribution(y: Array, label: str) -> BarFigure:
+    """Shares of rows by class of the outcome: zero by itself, then classes between round edges."""
+    bars: list[tuple[str, float]] = []
+    for below, name in ((y < 0, "< 0"), (y == 0, "0")):
+        if below.any():
+            bars.append((name, 100 * float(below.mean())))
+    positive = y[y > 0]
+    edges = _round_edges(positive)
+    counts = np.histogram(positive, bins=edges)[0] if len(edges) > 1 else np.empty(0)
+    bars += [
+        (f"{low:.6g}–{high:.6g}", 100 * float(count) / y.size)
+        for low, high, count in zip(edges, edges[1:], counts, strict=False)
+    ]
+    return BarFigure(label, "share of rows (%)", tuple(bars))
+
+
+def _round_edges(positive: Array) -> list[float]:
+    """Edges 1, 2, 5 times powers of ten around the values, thinned until every class has enough rows."""
+    if positive.size < 2 * FEWEST_IN_CLASS:
+        return []
+    low, high = np.floor(np.log10(positive.min())), np.ceil(np.log10(positive.max()))
+    edges = [step * 10.0**power for power in np.arange(low, high + 1) for step in (1, 2, 5)]
+    edges = [edge for edge in edges if edge <= 10.0**high]
+    start = max((edge for edge in edges if edge <= positive.min()), default=edges[0])
+    stop = min((edge for edge in edges if edge > positive.max()), default=edges[-1] * 2)
+    kept, wanted = [start], max(FEWEST_IN_CLASS, positive.size // 12)
+    for edge in (*(edge for edge in edges if start < edge < stop), stop):
+        if ((positive >= kept[-1]) & (positive < edge)).sum() >= wanted:
+            kept.append(edge)
+    if kept[-1] != stop:
+        kept = [*kept[:-1], stop] if len(kept) > 1 else [start, stop]
+    return kept

@@ -1,0 +1,289 @@
+"""Two models on the same rows as one estimate: a pair of numbers with its covariance, and the interval that holds.
+
+With clusters each number is found again without each cluster in turn. Without, influence rows with scores divided by
+one minus the leverage carry the error; where few rows carry it, a symmetric bootstrap-t takes the place of t.
+"""
+
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass, replace
+
+import numpy as np
+import numpy.typing as npt
+from scipy import stats
+
+from reviewkit.design_matrix import Design
+from reviewkit.estimators.fit import Codes, Fit, Sample, cluster_sums, influence
+from reviewkit.estimators.least_squares import fit_least_squares
+from reviewkit.estimators.poisson import fit_poisson
+from reviewkit.implied import Contrast, MeanModel, coefficient_influence, effect, effect_influence
+from reviewkit.refusals import NotEstimable
+
+Array = npt.NDArray[np.float64]
+Progress = Callable[[str], None]
+"""Told in a few words what is being done."""
+
+FEW_ROWS = 20.0
+"""Effective rows under which t gives way to the bootstrap-t (measured in DEVELOPERS.md)."""
+VERY_FEW_ROWS = 10.0
+"""Effective rows under which a conclusion is marked weak."""
+DRAWS = 999
+_BLOCK_CELLS = 4_000_000  # of a rows × clusters matrix held at once
+_SETTLED = 1e-10
+
+FITTERS: Mapping[str, Callable[[Sample], Fit]] = {"ols": fit_least_squares, "poisson": fit_poisson}
+
+
+@dataclass(frozen=True, slots=True)
+class Side:
+    """One of the two models, and the number that is compared."""
+
+    fit: Fit
+    rows: npt.NDArray[np.int64]
+    """Places of its rows among the rows of both, (n,)."""
+    codes: Codes | None
+    """Cluster of each of its rows, counted among the clusters of both, (n,)."""
+    place: int | None
+    """The coefficient compared; None where an implied effect is."""
+    model: MeanModel | None = None
+    of: Contrast | None = None
+
+    def value(self, on_basis: Array, weights: Array) -> float:
+        """The compared number at other coefficients and weights (n,), such as those without a cluster."""
+        sample = self.fit.sample
+        coefficients = sample.basis.map @ on_basis
+        if self.place is not None:
+            return float(coefficients[self.place])
+        assert self.model is not None and self.of is not None  # noqa: S101
+        residuals = sample.y - sample.offset - sample.basis.z @ on_basis if self.model.smeared else sample.y
+        return effect(self.model, self.of, coefficients, residuals, weights)
+
+    def influence(self, jackknifed: bool) -> tuple[float, Array]:
+        """The compared number and each observation's influence on it, (n,)."""
+        if self.place is not None:
+            return coefficient_influence(self.fit, self.place, jackknifed)
+        assert self.model is not None and self.of is not None  # noqa: S101
+        return effect_influence(self.model, self.of, self.fit, jackknifed)
+
+
+@dataclass(frozen=True, slots=True)
+class Joint:
+    """The submitted and the alternative number as one estimate."""
+
+    submitted: float
+    alternative: float
+    covariance: Array
+    """(2, 2), submitted first."""
+    df: float
+    method: str
+    """leave-one-cluster-out, robust, or bootstrap-t."""
+    effective: float
+    """Effective rows behind the difference, or effective clusters."""
+    draws: Array | None = None
+    """Bootstrap draws (B, 5): both numbers, then their variances and covariance."""
+    failed_draws: int = 0
+
+    def contrast(self, ratio: float) -> tuple[float, float]:
+        """alternative - ratio · submitted, and its error."""
+        v = self.covariance
+        variance = v[1, 1] - 2 * ratio * v[0, 1] + ratio**2 * v[0, 0]
+        return self.alternative - ratio * self.submitted, float(np.sqrt(max(variance, 0.0)))
+
+    def critical(self, ratio: float, level: float) -> float:
+        """The two-sided critical value of contrast(ratio) at `level`, such as 0.95."""
+        if self.draws is None:
+            return float(stats.t.ppf(0.5 + level / 2, self.df))
+        s, a, v_s, v_a, c = self.draws.T
+        error = np.sqrt(np.maximum(v_a - 2 * ratio * c + ratio**2 * v_s, 0))
+        gap = np.abs((a - ratio * s) - (self.alternative - ratio * self.submitted))
+        return float(np.quantile(gap[error > 0] / error[error > 0], level))
+
+    def interval_of(self, which: int, level: float) -> tuple[float, float]:
+        """The interval of the submitted (0) or the alternative (1) number."""
+        value = (self.submitted, self.alternative)[which]
+        half = self._critical_of(which, level) * float(np.sqrt(self.covariance[which, which]))
+        return value - half, value + half
+
+    def _critical_of(self, which: int, level: float) -> float:
+        if self.draws is None:
+            return self.critical(0.0, level)
+        centre = (self.submitted, self.alternative)[which]
+        error = np.sqrt(self.draws[:, 2 + which])
+        gaps = np.abs(self.draws[:, which] - centre)[error > 0] / error[error > 0]
+        return float(np.quantile(gaps, level))
+
+
+def estimate_joint(submitted: Side, alternative: Side, rows: int, seed: int, progress: Progress | None = None) -> Joint:
+    """The pair with its covariance, by the rule for the data at hand; `rows` counts the rows of both models.
+
+    Raises:
+        NotEstimable: A model has no such number, or cannot be fitted again without some cluster.
+    """
+    if submitted.codes is not None and alternative.codes is not None:
+        return _without_each_cluster(submitted, alternative, progress)
+    return _by_rows(submitted, alternative, rows, seed, progress)
+
+
+def _by_rows(submitted: Side, alternative: Side, rows: int, seed: int, progress: Progress | None) -> Joint:
+    numbers, psi = [], np.zeros((2, rows))
+    multiplicity = np.ones(rows)
+    for which, side in enumerate((submitted, alternative)):
+        value, influences = side.influence(jackknifed=True)
+        numbers.append(value)
+        psi[which, side.rows] = influences
+        multiplicity[side.rows] = side.fit.sample.multiplicity
+    covariance = (psi * multiplicity) @ psi.T
+    difference = psi[1] - psi[0]
+    fourth = float(multiplicity @ difference**4)
+    effective = float(multiplicity @ difference**2) ** 2 / fourth if fourth > 0 else float("inf")
+    df = min(submitted.fit.degrees_of_freedom, alternative.fit.degrees_of_freedom)
+    joint = Joint(numbers[0], numbers[1], covariance, df, "robust", effective)
+    if effective >= FEW_ROWS:
+        return joint
+    draws, failed = _bootstrap(submitted, alternative, rows, seed, progress)
+    return replace(joint, method="bootstrap-t", draws=draws, failed_draws=failed)
+
+
+def _bootstrap(
+    submitted: Side, alternative: Side, rows: int, seed: int, progress: Progress | None
+) -> tuple[Array, int]:
+    """Both numbers and their covariance in resamples of rows; a draw that cannot be fitted is counted and left out."""
+    random = np.random.default_rng(seed)
+    draws, failed = [], 0
+    for number in range(DRAWS):
+        counts = random.multinomial(rows, np.full(rows, 1 / rows)).astype(float)
+        try:
+            draws.append(_draw(submitted, alternative, counts))
+        except (NotEstimable, np.linalg.LinAlgError):
+            failed += 1
+        if progress and number % 50 == 0:
+            progress(f"resampling rows, {number:,} of {DRAWS:,}")
+    if len(draws) < DRAWS / 2:
+        raise NotEstimable("bootstrap", f"{failed:,} of {DRAWS:,} resamples could not be fitted")
+    return np.array(draws), failed
+
+
+def _draw(submitted: Side, alternative: Side, counts: Array) -> tuple[float, ...]:
+    numbers, psi = [], np.zeros((2, counts.size))
+    for which, side in enumerate((submitted, alternative)):
+        again = _resampled(side, counts[side.rows])
+        value, influences = again.influence(jackknifed=True)
+        numbers.append(value)
+        psi[which, again.rows] = influences
+    (v_s, c), (_, v_a) = (psi * counts) @ psi.T
+    return numbers[0], numbers[1], v_s, v_a, c
+
+
+def _resampled(side: Side, counts: Array) -> Side:
+    """The same side on the rows drawn, each as often as it was drawn."""
+    kept = counts > 0
+    old = side.fit.sample
+    sample = replace(
+        old,
+        basis=replace(old.basis, z=old.basis.z[kept]),
+        y=old.y[kept],
+        weights=old.weights[kept],
+        multiplicity=(old.multiplicity * counts)[kept],
+        offset=old.offset[kept],
+        clusters=None,
+    )
+    fit = FITTERS[side.fit.estimator](sample)
+    model, of = side.model, side.of
+    if model is not None and of is not None:
+        model = replace(model, index_offset=model.index_offset[kept], factor=model.factor[kept])
+        of = replace(of, first=of.first[kept], second=of.second[kept])
+    return replace(side, fit=fit, rows=side.rows[kept], model=model, of=of)
+
+
+def _without_each_cluster(submitted: Side, alternative: Side, progress: Progress | None) -> Joint:
+    """Both numbers with each cluster left out in turn; V = (G-1)/G · sum of (without - whole)², t with G-1."""
+    assert submitted.codes is not None and alternative.codes is not None  # noqa: S101
+    groups = int(max(submitted.codes.max(), alternative.codes.max())) + 1
+    if groups < 2:
+        raise NotEstimable("comparison", "there is one cluster only", "two or more clusters")
+    whole, apart = [], np.zeros((2, groups))
+    for which, side in enumerate((submitted, alternative)):
+        weights = side.fit.sample.weights * side.fit.sample.multiplicity
+        whole.append(side.value(side.fit.on_basis, weights))
+        apart[which] = _values_without(side, groups, progress) - whole[which]
+    covariance = (groups - 1) / groups * apart @ apart.T
+    return Joint(whole[0], whole[1], covariance, groups - 1.0, "leave-one-cluster-out", float(groups))
+
+
+def _values_without(side: Side, groups: int, progress: Progress | None) -> Array:
+    """The compared number without each cluster, (G,)."""
+    assert side.codes is not None  # noqa: S101
+    on_basis = coefficients_without(side.fit, side.codes, groups)
+    if side.place is not None:
+        return np.asarray(on_basis @ side.fit.sample.basis.map[side.place])
+    weights = side.fit.sample.weights * side.fit.sample.multiplicity
+    values = np.empty(groups)
+    for group in range(groups):
+        values[group] = side.value(on_basis[group], weights * (side.codes != group))
+        if progress and group % 20 == 0:
+            progress(f"leaving out each cluster, {group:,} of {groups:,}")
+    return values
+
+
+def coefficients_without(fit: Fit, codes: Codes, groups: int) -> Array:
+    """Coefficients on the basis without each cluster, (G, k), from the clusters' own cross-products.
+
+    Least squares is exact after one step. For an exponential mean each further step uses the exact score without the
+    cluster and the cross-products of the whole fit less the cluster's; steps end when none moves any number.
+
+    Raises:
+        NotEstimable: The model cannot be fitted without some cluster.
+    """
+    grams, whole = _cluster_grams(fit, codes, groups)
+    z = fit.sample.basis.z
+    score = cluster_sums((fit.residuals * fit.sample.weights * fit.sample.multiplicity)[:, None] * z, codes, groups)
+    left = whole - grams
+    scale = np.sqrt(np.diag(whole))
+    if np.linalg.cond(left / np.outer(scale, scale)).max() > 1e12:
+        raise NotEstimable("leaving out a cluster", "a covariate stands on one cluster alone")
+    on_basis = fit.on_basis - np.linalg.solve(left, score[:, :, None])[:, :, 0]
+    if fit.estimator == "ols":
+        return on_basis
+    return _settle_without(fit, codes, on_basis, left)
+
+
+def _cluster_grams(fit: Fit, codes: Codes, groups: int) -> tuple[Array, Array]:
+    """Cross-products of each cluster, (G, k, k), and of all rows, (k, k)."""
+    z = fit.sample.basis.z
+    weights = fit.sample.weights * fit.sample.multiplicity * fit.curvature
+    k = z.shape[1]
+    grams = np.empty((groups, k, k))
+    for row in range(k):
+        weighted = weights * z[:, row]
+        for column in range(row, k):
+            grams[:, row, column] = grams[:, column, row] = np.bincount(codes, weighted * z[:, column], groups)
+    return grams, grams.sum(axis=0)
+
+
+def _settle_without(fit: Fit, codes: Codes, on_basis: Array, left: Array) -> Array:
+    z, sample = fit.sample.basis.z, fit.sample
+    weights = (sample.weights * sample.multiplicity)[:, None]
+    width = max(1, _BLOCK_CELLS // len(z))
+    for start in range(0, len(on_basis), width):
+        block = slice(start, min(start + width, len(on_basis)))
+        without = weights * (codes[:, None] != np.arange(block.start, block.stop)[None, :])
+        for _ in range(50):
+            mean = np.exp(z @ on_basis[block].T + sample.offset[:, None])
+            score = (without * (sample.y[:, None] - mean)).T @ z
+            step = np.linalg.solve(left[block], score[:, :, None])[:, :, 0]
+            on_basis[block] += step
+            if np.abs(step).max() < _SETTLED:
+                break
+        else:
+            raise NotEstimable("leaving out a cluster", "the estimate without some cluster does not come to rest")
+    return on_basis
+
+
+def effective_clusters(fit: Fit, codes: Codes, groups: int, place: int) -> float:
+    """G / (1 + CV²) of the clusters' shares in the variation of one column after the others; at most G."""
+    gradient = np.zeros(len(fit.coefficients))
+    gradient[place] = 1.0
+    scored = influence(fit, gradient)
+    residual = fit.residuals * fit.sample.weights
+    partial = np.divide(scored, residual, out=np.zeros_like(scored), where=residual != 0)
+    share = cluster_sums(partial**2 * fit.sample.weights * fit.curvature, codes, groups)
+    return float(groups / (1 + share.var() / share.mean() ** 2))
