@@ -55,6 +55,11 @@ class Comparison:
     left: "Expression"
     right: "Expression"
 
+    @property
+    def names(self) -> tuple[str, ...]:
+        """The facts it compares."""
+        return (*_names_in(self.left), *_names_in(self.right))
+
 
 @dataclass(frozen=True, slots=True)
 class Stated:
@@ -217,9 +222,8 @@ def names_of(clause: Clause) -> Iterator[str]:
     """The facts that a clause names, settings left out."""
     for part in parts_of(clause):
         match part:
-            case Comparison(_, left, right):
-                yield from _names_in(left)
-                yield from _names_in(right)
+            case Comparison():
+                yield from part.names
             case Stated(fact):
                 yield fact.name
 

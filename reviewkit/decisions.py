@@ -1,10 +1,17 @@
 """Derives, decides every rule for every subject, finds disagreements, and picks the next question."""
 
+import math
+from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass
 
-from reviewkit.facts import Fact, Facts
-from reviewkit.rules import Finding, RuleBook
-from reviewkit.vocabulary import FactDefinition
+from reviewkit.clauses import Comparison, Literal, Lookup, Name
+from reviewkit.derived import derive, needs
+from reviewkit.facts import Fact, Facts, NotStated, SourceKind, Standing, Value
+from reviewkit.placeholders import render
+from reviewkit.printed import Printed
+from reviewkit.rules import Finding, Importance, Rule, RuleBook, State
+from reviewkit.vocabulary import PLACES, FactDefinition, Kind
+from reviewkit.wording import joined, sentence
 
 
 @dataclass(frozen=True, slots=True)
@@ -14,6 +21,11 @@ class Disagreement:
     name: str
     subject: str
     facts: tuple[Fact, ...]
+
+    @property
+    def settled(self) -> bool:
+        """Whether the referee has had the last word."""
+        return self.facts[-1].standing is Standing.SETTLED
 
 
 @dataclass(frozen=True, slots=True)
@@ -26,16 +38,245 @@ class Question:
     """Names of the rules whose state the answer can still change."""
 
 
+# --- findings ---------------------------------------------------------------------------------------------------
+
+
 def decide(facts: Facts, book: RuleBook) -> tuple[Finding, ...]:
-    """Every rule's finding for every subject of its kind, facts derived first."""
-    raise NotImplementedError
+    """Every rule's finding for every subject of its kind, facts derived first; subject by subject in the book's order."""
+    return _decided(derive(facts), book)
+
+
+def _decided(facts: Facts, book: RuleBook) -> tuple[Finding, ...]:
+    return tuple(
+        _finding(rule, subject, facts, book) for rule in book.rules for subject in facts.subjects(rule.subject)
+    )
+
+
+def _finding(rule: Rule, subject: str, facts: Facts, book: RuleBook) -> Finding:
+    lookup = remembering(book.lookup(facts, subject))
+    state = state_of(rule, lookup)
+    names = dict.fromkeys(name for condition in rule.conditions for name in condition.names)
+    known = (facts.known(name, subject) for name in names)
+    missing = missing_from(rule, lookup) if state is State.OPEN else ()
+    return Finding(
+        rule=rule,
+        subject=subject,
+        state=state,
+        importance=importance_of(rule, lookup),
+        facts=tuple(fact for fact in known if fact is not None),
+        missing=missing,
+        reason=_reason(rule, lookup, state, [book.vocabulary[name] for name in missing]),
+    )
+
+
+def remembering(lookup: Lookup) -> Lookup:
+    """The same lookup, asking only once for each name."""
+    seen: dict[str, Value | None] = {}
+
+    def find(name: str) -> Value | None:
+        if name not in seen:
+            seen[name] = lookup(name)
+        return seen[name]
+
+    return find
+
+
+def state_of(rule: Rule, lookup: Lookup) -> State:
+    """Open where a condition that counts is unknown; the authors' choice may stand although `when` is true."""
+    applies = rule.applies.decide(lookup)
+    if applies is not True:
+        return State.OPEN if applies is None else State.NOT_APPLICABLE
+    stands = rule.stands_when.decide(lookup) if rule.stands_when else False
+    when = rule.when.decide(lookup)
+    if stands or when is False:
+        return State.CLEAR
+    return State.RAISED if when and stands is False else State.OPEN
+
+
+def importance_of(rule: Rule, lookup: Lookup) -> Importance:
+    """The rule's importance, major where `major_when` is true."""
+    return Importance.MAJOR if rule.major_when and rule.major_when.decide(lookup) else rule.importance
+
+
+def missing_from(rule: Rule, lookup: Lookup) -> tuple[str, ...]:
+    """All facts that can still change the state of an open rule."""
+    parts = [rule.applies, rule.when, *([rule.stands_when] if rule.stands_when else [])]
+    if rule.when.decide(lookup) is False or (rule.stands_when and rule.stands_when.decide(lookup)):
+        parts = [rule.applies]
+    return tuple(dict.fromkeys(name for part in parts for name in part.missing(lookup)))
+
+
+def _reason(rule: Rule, lookup: Lookup, state: State, missing: Sequence[FactDefinition]) -> str:
+    if state is State.OPEN:
+        waits = joined(definition.label for definition in missing)
+        return sentence(f"waits on: {waits}") if waits else "What is known does not decide it."
+    if state is not State.CLEAR:
+        return ""
+    stands = rule.stands_when is not None and rule.stands_when.decide(lookup) and rule.when.decide(lookup) is not False
+    return render(rule.stands if stands else rule.clear, lookup)
+
+
+# --- disagreements ----------------------------------------------------------------------------------------------
 
 
 def disagreements(facts: Facts) -> tuple[Disagreement, ...]:
-    """Where stated, done and settled facts differ."""
-    raise NotImplementedError
+    """Where the latest stated, done and settled facts of one name and subject differ; derived facts left out."""
+    latest: dict[tuple[str, str], dict[Standing, Fact]] = {}
+    for fact in facts:
+        if fact.source.kind is not SourceKind.DERIVED and not isinstance(fact.value, NotStated):
+            latest.setdefault((fact.name, fact.subject), {})[fact.standing] = fact
+    return tuple(
+        Disagreement(name, subject, tuple(found[standing] for standing in Standing if standing in found))
+        for (name, subject), found in latest.items()
+        if not _all_agree(tuple(found.values()))
+    )
+
+
+def _all_agree(found: tuple[Fact, ...]) -> bool:
+    return all(agree(one.value, other.value) for place, one in enumerate(found) for other in found[place + 1 :])
+
+
+def agree(one: Value, other: Value) -> bool:
+    """Whether two values say the same; a printed figure agrees with every number that rounds to it."""
+    match one, other:
+        case Printed(), Printed():
+            return one.agrees(other.value) or other.agrees(one.value)
+        case (Printed() as printed, float(number)) | (float(number), Printed() as printed):
+            return printed.agrees(number)
+        case float(), float():
+            return math.isclose(one, other, rel_tol=1e-9, abs_tol=1e-12)
+        case tuple(), tuple():
+            return set(one) == set(other)
+        case _:
+            return one == other
+
+
+# --- the next question ------------------------------------------------------------------------------------------
+
+
+@dataclass(frozen=True, slots=True)
+class _Wait:
+    """A finding that waits on a fact which can be asked for."""
+
+    finding: Finding
+    definition: FactDefinition
+    subject: str
+    """The subject that the fact is about."""
+    name: str
+    """What the rule's conditions call it: the fact itself, or one that is worked out from it."""
 
 
 def next_question(facts: Facts, book: RuleBook) -> Question | None:
-    """The fact to ask for next, or None where no answer can change a state any more."""
-    raise NotImplementedError
+    """The fact to ask for next, or None where no answer can change a state any more.
+
+    The topic in which most findings are open comes first; within it, questions follow the places where answers are
+    found, since looking up costs more than answering.
+    """
+    facts = derive(facts)
+    waits = [wait for finding in _decided(facts, book) for wait in _waits(finding, facts, book)]
+    for topic in _topics(waits, book):
+        for group in _questions([wait for wait in waits if wait.finding.rule.topic == topic], book):
+            definition, subject = group[0].definition, group[0].subject
+            same = [wait for wait in waits if (wait.definition, wait.subject) == (definition, subject)]
+            waiting = dict.fromkeys(w.finding.rule.name for w in same if _can_change(w, facts, book))
+            if waiting:
+                return Question(definition, subject, tuple(waiting))
+    return None
+
+
+def _waits(finding: Finding, facts: Facts, book: RuleBook) -> Iterator[_Wait]:
+    """What an open finding should ask for first; a fact that is only worked out stands for what it needs."""
+    if finding.state is not State.OPEN:
+        return
+    lookup = remembering(book.lookup(facts, finding.subject))
+    for name in _first_missing(finding.rule, lookup):
+        for asked in _askable(name, lookup, book):
+            definition = book.vocabulary[asked]
+            subject = _subject_of(definition, finding.subject, facts)
+            if subject:
+                yield _Wait(finding, definition, subject, name)
+
+
+def _first_missing(rule: Rule, lookup: Lookup) -> tuple[str, ...]:
+    """What decides whether the rule applies comes before what it finds, and that before why a choice may stand."""
+    if rule.applies.decide(lookup) is None:
+        return rule.applies.first_missing(lookup)
+    found = rule.when.first_missing(lookup)
+    return found or (rule.stands_when.first_missing(lookup) if rule.stands_when else ())
+
+
+def _askable(name: str, lookup: Lookup, book: RuleBook) -> tuple[str, ...]:
+    if book.vocabulary[name].asked:
+        return (name,)
+    unknown = (need for need in needs(name) if lookup(need) is None)
+    return tuple(need for need in unknown if book.vocabulary[need].asked)
+
+
+def _subject_of(definition: FactDefinition, subject: str, facts: Facts) -> str | None:
+    """The nearest subject in sight that the fact can be about."""
+    in_sight = (each for level in facts.sight(subject) for each in level)
+    return next((each for each in in_sight if each.partition(":")[0] == definition.about), None)
+
+
+def _topics(waits: Sequence[_Wait], book: RuleBook) -> list[str]:
+    """Topics by the number of findings that wait on an answer, most first."""
+    counted = dict.fromkeys(dict.fromkeys(rule.topic for rule in book.rules), 0)
+    for topic, _, _ in {(wait.finding.rule.topic, wait.finding.rule.name, wait.finding.subject) for wait in waits}:
+        counted[topic] += 1
+    return sorted((topic for topic in counted if counted[topic]), key=lambda topic: -counted[topic])
+
+
+def _questions(waits: Sequence[_Wait], book: RuleBook) -> list[list[_Wait]]:
+    """Waits on one fact together: by place, then by how many wait, then in the vocabulary's order."""
+    order = {definition.name: place for place, definition in enumerate(book.vocabulary)}
+    groups: dict[tuple[str, str], list[_Wait]] = {}
+    for wait in waits:
+        groups.setdefault((wait.definition.name, wait.subject), []).append(wait)
+    key: Callable[[list[_Wait]], tuple[int, int, int]] = lambda group: (  # noqa: E731
+        PLACES.index(group[0].definition.found_in),
+        -len(group),
+        order[group[0].definition.name],
+    )
+    return sorted(groups.values(), key=key)
+
+
+def _can_change(wait: _Wait, facts: Facts, book: RuleBook) -> bool:
+    """Whether some answer changes the rule's state, or what it then waits on; true where that is hard to tell."""
+    if wait.name != wait.definition.name or _compared_with_another(wait.finding.rule, wait.name):
+        return True
+    lookup = remembering(book.lookup(facts, wait.finding.subject))
+    others = set(wait.finding.missing) - {wait.name}
+    for value in _candidates(wait.definition, wait.finding.rule):
+        answered = _answered(lookup, wait.name, value)
+        state = state_of(wait.finding.rule, answered)
+        if state is not State.OPEN or set(missing_from(wait.finding.rule, answered)) != others:
+            return True
+    return False
+
+
+def _answered(lookup: Lookup, name: str, value: Value) -> Lookup:
+    return lambda asked: value if asked == name else lookup(asked)
+
+
+def _compared_with_another(rule: Rule, name: str) -> bool:
+    """Whether a comparison holds the fact together with another one, or within a calculation."""
+    pairs = [pair for condition in rule.conditions for pair in condition.comparisons()]
+    return any(not _simple(pair) and name in pair.names for pair in pairs)
+
+
+def _simple(pair: Comparison) -> bool:
+    return {type(pair.left), type(pair.right)} == {Name, Literal}
+
+
+def _candidates(definition: FactDefinition, rule: Rule) -> list[Value]:
+    """Answers that tell conditions apart: each option; numbers on, below and above each edge."""
+    if definition.kind in (Kind.ONE, Kind.ANSWER):
+        return list(definition.options)
+    pairs = [pair for condition in rule.conditions for pair in condition.comparisons() if definition.name in pair.names]
+    literals = [side.value for pair in pairs for side in (pair.left, pair.right) if isinstance(side, Literal)]
+    flat = [one for value in literals for one in (value if isinstance(value, tuple) else (value,))]
+    edges = {edge for one in flat if isinstance(one, float) for edge in (one - 1e-6, one, one + 1e-6)}
+    words = {one for one in flat if isinstance(one, str)}
+    if definition.kind in (Kind.SOME, Kind.NAMES):
+        return [(), tuple(sorted(words)), *((word,) for word in sorted(words))]
+    return [*sorted(edges), *sorted(words), "" if words else 0.0]

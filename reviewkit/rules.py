@@ -11,6 +11,9 @@ from reviewkit.references import Citation, Work
 from reviewkit.refusals import Refusal
 from reviewkit.vocabulary import Vocabulary
 
+TOPICS = ("claim", "outcome", "mean", "inference", "panel", "refit", "reporting", "not-covered")
+"""The order in which topics are shown; a house may add its own after these."""
+
 
 class State(StrEnum):
     """How a rule ends for one subject."""

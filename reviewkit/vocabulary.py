@@ -84,7 +84,8 @@ class FactDefinition:
             return NOT_STATED
         match self.kind:
             case Kind.NUMBER:
-                return self.checked(read_printed(plain, where).value, where)
+                hundred = 100 if self.unit == "share" and "%" in plain else 1
+                return self.checked(read_printed(plain, where).value / hundred, where)
             case Kind.PRINTED:
                 return read_printed(plain, where)
             case Kind.SOME | Kind.NAMES:
