@@ -6,10 +6,10 @@ from dataclasses import dataclass
 
 from reviewkit.clauses import Comparison, Literal, Lookup, Name
 from reviewkit.derived import derive, needs
-from reviewkit.facts import Fact, Facts, NotStated, SourceKind, Standing, Value
+from reviewkit.facts import STUDY, Fact, Facts, NotStated, Source, SourceKind, Standing, Value
 from reviewkit.placeholders import render
 from reviewkit.printed import Printed
-from reviewkit.rules import Finding, Importance, Rule, RuleBook, State
+from reviewkit.rules import Example, Finding, Importance, Rule, RuleBook, State
 from reviewkit.vocabulary import PLACES, FactDefinition, Kind
 from reviewkit.wording import joined, sentence
 
@@ -42,7 +42,7 @@ class Question:
 
 
 def decide(facts: Facts, book: RuleBook) -> tuple[Finding, ...]:
-    """Every rule's finding for every subject of its kind, facts derived first; subject by subject in the book's order."""
+    """Every rule's finding for every subject of its kind, facts derived first, in the order of the book."""
     return _decided(derive(facts), book)
 
 
@@ -114,6 +114,18 @@ def _reason(rule: Rule, lookup: Lookup, state: State, missing: Sequence[FactDefi
         return ""
     stands = rule.stands_when is not None and rule.stands_when.decide(lookup) and rule.when.decide(lookup) is not False
     return render(rule.stands if stands else rule.clear, lookup)
+
+
+def ending(rule: Rule, example: Example, book: RuleBook) -> tuple[State, Importance]:
+    """How a rule ends for one of its examples: what `rules check` and the tests hold against the stated ending."""
+    subjects = {"study": STUDY, **{kind: f"{kind}:example" for kind in ("data", "model", "claim")}}
+    facts = Facts().linked(subjects["claim"], subjects["model"]).linked(subjects["model"], subjects["data"])
+    given = (
+        Fact(name, value, Standing.SETTLED, Source(SourceKind.ANSWER), subjects[book.vocabulary[name].about])
+        for name, value in example.facts
+    )
+    lookup = remembering(book.lookup(derive(facts.adding(given)), subjects[rule.subject]))
+    return state_of(rule, lookup), importance_of(rule, lookup)
 
 
 # --- disagreements ----------------------------------------------------------------------------------------------

@@ -52,7 +52,7 @@ def inside_alternative(lookup: Lookup) -> Value | None:
     percent, low, high = (lookup(name) for name in _INSIDE[:3])
     if not isinstance(percent, Printed):
         return lookup("refit.printed_reading_inside")
-    if isinstance(low, float) and isinstance(high, float):
+    if isinstance(low, (int, float)) and isinstance(high, (int, float)):
         first, last = _with_sign_of(lookup("claim.coefficient"), percent)
         return _yes(first <= high and low <= last)
     return NOT_STATED if isinstance(low, NotStated) or isinstance(high, NotStated) else None
@@ -61,7 +61,7 @@ def inside_alternative(lookup: Lookup) -> Value | None:
 def has_zeros(lookup: Lookup) -> Value | None:
     """Whether the outcome has zeros, from their share, else from what was done with them."""
     share, zeros = lookup("outcome.zero_share"), lookup("outcome.zeros")
-    if isinstance(share, float):
+    if isinstance(share, (int, float)):
         return _yes(share > 0)
     if zeros == "none present":
         return "no"
@@ -71,7 +71,14 @@ def has_zeros(lookup: Lookup) -> Value | None:
 def smaller_arm(lookup: Lookup) -> Value | None:
     """The number of treated or of untreated clusters, whichever is smaller."""
     treated, untreated = lookup("refit.treated_clusters"), lookup("refit.untreated_clusters")
-    return min(treated, untreated) if isinstance(treated, float) and isinstance(untreated, float) else None
+    if isinstance(treated, (int, float)) and isinstance(untreated, (int, float)):
+        return float(min(treated, untreated))
+    return None
+
+
+def spread_is_steady(lookup: Lookup) -> Value | None:
+    """Whether the log model suffices for a ratio of means: shown where both models agree on the data."""
+    return "yes" if lookup("refit.conclusion") == "agrees" else None
 
 
 _PERCENT = ("claim.coefficient", "claim.percent")
@@ -89,6 +96,7 @@ DERIVATIONS = (
     Derivation("claim.percent_is_exact", "claim", _PERCENT, percent_is_exact),
     Derivation("claim.inside_alternative", "claim", _INSIDE, inside_alternative),
     Derivation("outcome.has_zeros", "model", ("outcome.zero_share", "outcome.zeros"), has_zeros),
+    Derivation("spread.steady", "model", ("refit.conclusion",), spread_is_steady),
     Derivation("clusters.smaller_arm", "model", ("refit.treated_clusters", "refit.untreated_clusters"), smaller_arm),
 )
 """In an order in which none needs a later one."""

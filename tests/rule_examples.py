@@ -1,36 +1,29 @@
-"""Cases made from the examples that rules carry."""
+"""The rule book of the checkout, and cases made from the examples that its rules carry."""
 
 from pathlib import Path
 
 from reviewkit.conditions import Condition
-from reviewkit.decisions import importance_of, state_of
-from reviewkit.derived import derive
+from reviewkit.decisions import ending
 from reviewkit.facts import STUDY, Fact, Facts, Source, SourceKind, Standing
 from reviewkit.rulefiles import read_rule_book
-from reviewkit.rules import Example, Importance, Rule, RuleBook, State
+from reviewkit.rules import Example, Rule
 
 RULES = Path(__file__).parent.parent / "rules"
 BOOK = read_rule_book(RULES)
 SUBJECT = {"study": STUDY, "data": "data:example", "model": "model:example", "claim": "claim:example"}
 
 
-def facts_of(example: Example, book: RuleBook = BOOK) -> Facts:
-    """The example's facts, each about a subject of its kind; a claim sees its model, a model its data."""
+def case(values, standing=Standing.SETTLED) -> Facts:
+    """Facts by name, each about a subject of its kind; a claim sees its model, a model its data."""
     facts = Facts().linked("claim:example", "model:example").linked("model:example", "data:example")
     return facts.adding(
-        Fact(name, value, Standing.SETTLED, Source(SourceKind.ANSWER), SUBJECT[book.vocabulary[name].about])
-        for name, value in example.facts
+        Fact(name, value, standing, Source(SourceKind.ANSWER), SUBJECT[BOOK.vocabulary[name].about])
+        for name, value in dict(values).items()
     )
 
 
-def outcome(rule: Rule, example: Example, book: RuleBook = BOOK) -> tuple[State, Importance]:
-    """How the rule ends for the example."""
-    lookup = book.lookup(derive(facts_of(example, book)), SUBJECT[rule.subject])
-    return state_of(rule, lookup), importance_of(rule, lookup)
-
-
-def as_expected(rule: Rule, example: Example, book: RuleBook = BOOK) -> bool:
-    state, importance = outcome(rule, example, book)
+def as_expected(rule: Rule, example: Example) -> bool:
+    state, importance = ending(rule, example, BOOK)
     return state is example.state and example.importance in (None, importance)
 
 

@@ -5,11 +5,11 @@ from dataclasses import replace
 from functools import cache
 
 import pytest
-from rule_examples import BOOK, SUBJECT, as_expected, conditions_by_key, facts_of, outcome
+from rule_examples import BOOK, SUBJECT, as_expected, case, conditions_by_key
 
 from reviewkit.clauses import And, Calculation, Clause, Comparison, Expression, Literal, Not, Or, Stated
 from reviewkit.conditions import Condition
-from reviewkit.decisions import decide, importance_of, state_of
+from reviewkit.decisions import decide, ending, importance_of, state_of
 from reviewkit.derived import derive
 from reviewkit.rules import TOPICS, Rule, State
 
@@ -21,7 +21,7 @@ NEIGHBOUR = {"<": "<=", "<=": "<", ">": ">=", ">=": ">", "==": "!=", "!=": "==",
 @RULES
 def test_every_example_ends_as_it_says(rule):
     for place, example in enumerate(rule.examples, 1):
-        assert as_expected(rule, example), f"example {place}: {outcome(rule, example)}, not {example.state}"
+        assert as_expected(rule, example), f"example {place}: {ending(rule, example, BOOK)}, not {example.state}"
 
 
 @RULES
@@ -48,8 +48,8 @@ def test_a_name_belongs_to_one_rule():
 def test_the_decision_of_a_whole_case_is_the_decision_of_each_rule():
     for rule in BOOK.rules:
         for example in rule.examples:
-            found = [each for each in decide(facts_of(example), BOOK) if each.rule is rule]
-            expected = [] if not facts_of(example).subjects(rule.subject) else [example.state]
+            found = [each for each in decide(case(example.facts), BOOK) if each.rule is rule]
+            expected = [] if not case(example.facts).subjects(rule.subject) else [example.state]
             assert [each.state for each in found] == expected
 
 
@@ -64,7 +64,7 @@ def noticed(mutant: Rule) -> bool:
 
 @cache
 def seen_by(example, kind):
-    return BOOK.lookup(derive(facts_of(example)), SUBJECT[kind])
+    return BOOK.lookup(derive(case(example.facts)), SUBJECT[kind])
 
 
 def mutants(rule: Rule) -> Iterator[tuple[str, Rule]]:
