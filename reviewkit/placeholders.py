@@ -23,8 +23,13 @@ _NUMERIC = (Kind.NUMBER, Kind.PRINTED)
 
 def render(template: str, lookup: Lookup) -> str:
     """The text with its placeholders filled in; parts whose facts are unknown give way to their alternatives."""
-    chosen = _PART.sub(lambda part: _first_known(part[1], lookup), template)
-    return _tidy(chosen if "{" not in chosen else _filled(chosen, lookup) or "")
+    pieces = _PART.split(
+        template
+    )  # outside, part, outside, part, …; each filled in once, so that no value is read again
+    chosen = (
+        _first_known(piece, lookup) if place % 2 else _filled(piece, lookup) for place, piece in enumerate(pieces)
+    )
+    return _tidy("".join(piece or "" for piece in chosen))
 
 
 def placeholders(template: str) -> tuple[str, ...]:
