@@ -48,8 +48,8 @@ def alt_text(figure: FigureData, title: str) -> str:
         case BinnedFigure():
             return f"{lead} {_bins_in_words(figure)}"
         case BarFigure():
-            shown = "; ".join(f"{clean(label)} {percent(height)}" for label, height in figure.bars)
-            return f"{lead} Bars, {clean(figure.y_label)} by {clean(figure.x_label)}: {sentence(shown)}"
+            shown = "; ".join(f"{clean(label)}: {percent(height)}" for label, height in figure.bars)
+            return f"{lead} Bars, {clean(figure.y_label)} by {clean(figure.x_label)}: {shown}."
         case _:
             assert_never(figure)
 
@@ -66,7 +66,7 @@ def _row(columns: Sequence[str], row: Sequence[Cell]) -> tuple[str, ...]:
 def _cell(column: str, cell: Cell, error: float | None) -> str:
     """One cell: estimates follow the digits of their row's standard error."""
     name = column.lower()
-    if cell is None or cell == "" or cell != cell:  # noqa: PLR0124 – not a number
+    if cell is None or cell == "" or cell != cell:  # the last is true of not-a-number only
         return NO_VALUE
     if isinstance(cell, str):
         return clean(cell)
@@ -107,15 +107,15 @@ def _intervals_in_words(figure: IntervalFigure) -> str:
         lead = "Estimates with intervals of"
     shown = "; ".join(_interval_in_words(row) for row in rows)
     line = "" if figure.reference is None else f" A vertical line stands at {number(figure.reference)}."
-    return f"{lead} {clean(figure.x_label)}: {sentence(shown)}{line}"
+    return f"{lead} {clean(figure.x_label)}: {shown}.{line}"
 
 
 def _interval_in_words(row: Interval) -> str:
     label = clean(row.label)
     if row.low is None or row.high is None:
-        return f"{label} {estimate(row.estimate)}, no interval"
+        return f"{label}: {estimate(row.estimate)}, no interval"
     decimals = decimals_for((row.high - row.low) / 4, 2)
-    return f"{label} {fixed(row.estimate, decimals)} ({interval(row.low, row.high)})"
+    return f"{label}: {fixed(row.estimate, decimals)} ({interval(row.low, row.high)})"
 
 
 def _bins_in_words(figure: BinnedFigure) -> str:
@@ -130,4 +130,4 @@ def _bins_in_words(figure: BinnedFigure) -> str:
     )
     line = "" if figure.line is None else f" A straight line has the slope {estimate(figure.line[1])}."
     bins = counted(len(figure.bins), "bin")
-    return f"Binned means of {y_label} against {x_label}, {bins} with their 10 to 90 % ranges: {sentence(shown)}{line}"
+    return f"Binned means of {y_label} against {x_label}, {bins} each with the range of its middle rows: {shown}.{line}"

@@ -27,10 +27,9 @@ class _Length:
 
 def authors_note(case: CaseContent, phrases: Phrases) -> Note:
     """The fullest note that keeps to the limit on words; what is open is never cut."""
-    most = phrases.limit("full_points")
-    steps = [_Length(full, reasons) for full in range(most, -1, -1) for reasons in (6, 3, 0)]
-    note = _note(case, phrases, steps[0])
-    for step in steps:
+    fewer = range(phrases.limit("full_points"), -1, -1)
+    steps = [_Length(full, reasons) for full in fewer for reasons in (6, 3)]
+    for step in (*steps, _Length(0, 0)):
         note = _note(case, phrases, step)
         if words_in(note) <= phrases.limit("authors_words"):
             break
@@ -67,7 +66,8 @@ def _part(
         case "open":
             blocks = _open(case, phrases)
         case "closing":
-            return [Section("", _closing(case, phrases))] if told or rest else []
+            own_words = clean(case.wishes.own_words.get("closing", ""))
+            return [Section("", (Paragraph(own_words),))] if own_words else []
         case "works":
             entries = works_cited(told, case)
             blocks = (ReferenceList(entries),) if entries else ()
@@ -112,11 +112,6 @@ def _bounds(case: CaseContent, phrases: Phrases) -> list[str]:
     return found
 
 
-def _closing(case: CaseContent, phrases: Phrases) -> tuple[Block, ...]:
-    own = clean(case.wishes.own_words.get("closing", ""))
-    return (Paragraph(" ".join(part for part in (phrases.say("opening.closing"), own) if part)),)
-
-
 # --- looked at, and not looked at -------------------------------------------------------------------------------
 
 
@@ -128,9 +123,12 @@ def _in_state(case: CaseContent, state: State) -> list[Finding]:
 def _quiet(case: CaseContent, phrases: Phrases, most: int) -> tuple[Block, ...]:
     """Clear findings: some with their reason, the others by title."""
     found = _in_state(case, State.CLEAR)
-    reasons = tuple(dict.fromkeys(clean(finding.reason) for finding in found if finding.reason))[:most]
-    titles = dict.fromkeys(clean(finding.rule.title) for finding in found if clean(finding.reason) not in reasons)
-    more = phrases.say("quiet.more", titles="; ".join(titles)) if titles and most else ""
+    reasons = tuple(dict.fromkeys(clean(phrases.spoken(finding.reason)) for finding in found if finding.reason))[:most]
+    titles = dict.fromkeys(
+        clean(finding.rule.title) for finding in found if clean(phrases.spoken(finding.reason)) not in reasons
+    )
+    listed = "; ".join(title[:1].lower() + title[1:] for title in titles)
+    more = phrases.say("quiet.more", titles=listed) if listed and most else ""
     words = " ".join(part for part in (*reasons, more) if part)
     return (Paragraph(words),) if words else ()
 
@@ -142,7 +140,7 @@ def _open(case: CaseContent, phrases: Phrases) -> tuple[Block, ...]:
     asked = [label for label in labels if not label.endswith(_NEEDS_DATA)]
     by_data = [label.removesuffix(_NEEDS_DATA) for label in labels if label.endswith(_NEEDS_DATA)]
     lines = [*asked, *([phrases.say("open.data", labels=joined(by_data))] if by_data else [])]
-    return (Paragraph(f"{phrases.say('open.lead')} {sentence('; '.join(lines))}"),) if lines else ()
+    return (Paragraph(f"{phrases.say('open.lead')} {'; '.join(lines)}."),) if lines else ()
 
 
 def _label(case: CaseContent, name: str) -> str:

@@ -3,6 +3,7 @@
 from reviewkit import __version__
 from reviewkit.clauses import Lookup
 from reviewkit.compose.content import CaseContent
+from reviewkit.compose.length import words_in
 from reviewkit.compose.phrases import Phrases
 from reviewkit.compose.points import points
 from reviewkit.facts import Value
@@ -16,12 +17,16 @@ def editor_note(case: CaseContent, phrases: Phrases) -> Note:
     """At most a paragraph, the referee's own words for the editor, and a line on software."""
     model = _model(case)
     lookup = case.book.lookup(case.facts, model)
-    parts = [_claim(case, model, phrases), *_numbers(lookup, phrases), *_what_follows(case, phrases)]
     own = clean(case.wishes.own_words.get("editor", ""))
     software = phrases.say("editor.software" if case.repeats else "editor.software_only", version=__version__)
-    blocks = tuple(Paragraph(words) for words in (" ".join(filter(None, parts)), own, software) if words)
     title = phrases.say("titles.editor", title=clean(case.title))
-    return Note(title, Audience.EDITOR, (Section("", blocks),))
+    for brief in (False, True):
+        parts = [_claim(case, model, phrases), *_numbers(lookup, phrases, brief), *_what_follows(case, phrases)]
+        blocks = tuple(Paragraph(words) for words in (" ".join(filter(None, parts)), own, software) if words)
+        note = Note(title, Audience.EDITOR, (Section("", blocks),))
+        if words_in(note) <= phrases.limit("editor_words"):
+            break
+    return note
 
 
 def _model(case: CaseContent) -> str:
@@ -49,12 +54,12 @@ def _claim(case: CaseContent, model: str, phrases: Phrases) -> str:
     )
 
 
-def _numbers(lookup: Lookup, phrases: Phrases) -> list[str]:
+def _numbers(lookup: Lookup, phrases: Phrases, brief: bool) -> list[str]:
     if lookup("refit.conclusion") is None:
         return [phrases.say("editor.no_data")]
     return [
         _reproduced(lookup, phrases),
-        _alternative(lookup, phrases),
+        _alternative(lookup, phrases, brief),
         _direction(lookup, phrases),
         _conclusion(lookup, phrases),
     ]
@@ -70,20 +75,22 @@ def _reproduced(lookup: Lookup, phrases: Phrases) -> str:
     return phrases.say(f"editor.reproduced_{state}", figures=shown)
 
 
-def _alternative(lookup: Lookup, phrases: Phrases) -> str:
+def _alternative(lookup: Lookup, phrases: Phrases, brief: bool) -> str:
     """What the model of the mean gives, in percent where that has a meaning, else on the comparison's scale."""
     in_percent = isinstance(lookup("refit.alternative_percent"), float)
     ending, unit = ("_percent", "%") if in_percent else ("", "")
     value = lookup(f"refit.alternative{ending}")
     if not isinstance(value, float):
         return ""
-    shown = percent(value) if in_percent else f"{estimate(value)} ({_words(lookup('refit.scale'))})"
+    scale = _words(lookup("refit.scale"))
+    named = phrases.say(f"scales.{scale}") if phrases.has(f"scales.{scale}") else scale
+    shown = percent(value) if in_percent else f"{estimate(value)} ({named})"
     low, high = (lookup(f"refit.alternative{ending}_{end}") for end in ("low", "high"))
     if isinstance(low, float) and isinstance(high, float):
         shown = phrases.say("editor.with_interval", value=shown, level=_level(), interval=interval(low, high, unit))
     other = lookup(f"refit.submitted{ending}")
     own = percent(other) if in_percent else estimate(other)
-    submitted = phrases.say("editor.submitted", value=own) if isinstance(other, float) else ""
+    submitted = phrases.say("editor.submitted", value=own) if isinstance(other, float) and not brief else ""
     return phrases.say("editor.alternative", alternative=shown, submitted=submitted)
 
 
@@ -107,7 +114,10 @@ def _conclusion(lookup: Lookup, phrases: Phrases) -> str:
     why = _words(lookup("refit.why_no_conclusion"))
     if conclusion == "none" and not why:
         return ""
-    return phrases.say(f"editor.{conclusion}", bound=percent(bound), why=why.rstrip("."))
+    from reviewkit.comparison import MATERIAL_SHARE
+
+    material = fixed(100 * MATERIAL_SHARE, 0)
+    return phrases.say(f"editor.{conclusion}", bound=percent(bound), why=why.rstrip("."), material=material)
 
 
 def _what_follows(case: CaseContent, phrases: Phrases) -> list[str]:

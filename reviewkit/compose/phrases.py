@@ -14,6 +14,8 @@ from reviewkit.refusals import Refusal
 from reviewkit.shipped import templates_folder
 
 _NAME = re.compile(r"\{(\w+)\}")
+_WE = re.compile(r"\b(we are|we were|we have|we|our|us)\b", re.IGNORECASE)
+_AS_ONE = {"we are": "I am", "we were": "I was", "we have": "I have", "we": "I", "our": "my", "us": "me"}
 
 
 @dataclass(frozen=True, slots=True)
@@ -28,6 +30,10 @@ class Phrases:
         table, _, key = phrase.partition(".")
         known = {**self.voice, **values}
         return _NAME.sub(lambda found: known[found[1]], self.tables[table][key])
+
+    def spoken(self, words: str) -> str:
+        """Words of a rule, which says `we`, in the referee's voice."""
+        return words if self.voice["we"] == "we" else _WE.sub(lambda found: _AS_ONE[found[0].lower()], words)
 
     def has(self, name: str) -> bool:
         """Whether there is a phrase of that name."""

@@ -16,7 +16,8 @@ from reviewkit.wording import clean, joined, sentence, text
 PRIVATE = ("editor", "remark", "remarks")
 """First or last parts of the names of facts that never reach the authors."""
 
-_MOST_FACTS = 4
+_MOST_FACTS, _MOST_WORKS = 4, 2
+_ABOUT_NUMBERS = "refit"  # the topic of rules whose sentences tell what the data show
 _IN_THE_PAPER = (SourceKind.MANUSCRIPT, SourceKind.SCRIPT, SourceKind.ANSWER, SourceKind.SPECIFICATION)
 
 
@@ -97,16 +98,16 @@ def _exhibits_of(case: CaseContent, finding: Finding) -> tuple[int, ...]:
 def full_section(point: Point, number: int, case: CaseContent, phrases: Phrases) -> Section:
     """The point with what was done, the case for it, what was found, why it may matter, and a way."""
     rule, lookup = point.rule, authors_lookup(case, point.finding.subject)
-    request = render(rule.request, lookup).rstrip(".")
+    request = _told(rule.request, lookup, phrases).rstrip(".")
     title = phrases.say(
         "point.heading", number=str(number), request=_capital(request), importance=point.finding.importance
     )
     told = [
         ("paper", _in_the_paper(point, case, phrases)),
-        ("favour", render(rule.best_case, lookup)),
+        ("favour", _told(rule.best_case, lookup, phrases)),
         ("numbers", _from_the_numbers(point, lookup, phrases)),
         ("why", _why(rule, lookup, case, phrases)),
-        ("way", render(rule.way, lookup)),
+        ("way", _told(rule.way, lookup, phrases)),
         ("also", _also(point, case, phrases)),
     ]
     blocks = [Paragraph(words, phrases.say(f"leads.{lead}")) for lead, words in told if words]
@@ -115,7 +116,7 @@ def full_section(point: Point, number: int, case: CaseContent, phrases: Phrases)
 
 def short_line(point: Point, case: CaseContent, phrases: Phrases) -> str:
     """The point in one line."""
-    words = render(point.rule.short, authors_lookup(case, point.finding.subject)).rstrip(".")
+    words = _told(point.rule.short, authors_lookup(case, point.finding.subject), phrases).rstrip(".")
     own = case.wishes.own_words.get(point.rule.name, "")
     line = phrases.say("point.short", text=_capital(words), importance=point.finding.importance)
     return " ".join(part for part in (sentence(line), clean(own)) if part)
@@ -126,10 +127,10 @@ def _in_the_paper(point: Point, case: CaseContent, phrases: Phrases) -> str:
     lookup = authors_lookup(case, point.finding.subject)
     facts = [fact for fact in point.finding.facts if not is_private(fact.name)]
     stated = [fact for fact in facts if fact.source.kind in _IN_THE_PAPER]
-    if point.exhibits:
+    if point.rule.topic == _ABOUT_NUMBERS:
         words = sentence("; ".join(_stated(fact, case) for fact in stated[:_MOST_FACTS]))
     else:
-        words = render(point.rule.says, lookup)
+        words = _with_exhibits(_told(point.rule.says, lookup, phrases), point, phrases)
     found = places(facts, phrases)
     return " ".join(part for part in (words, phrases.say("point.places", places=found) if found else "") if part)
 
@@ -152,16 +153,22 @@ def places(facts: Iterable[Fact], phrases: Phrases) -> str:
 
 
 def _from_the_numbers(point: Point, lookup: Lookup, phrases: Phrases) -> str:
+    says = _told(point.rule.says, lookup, phrases)
+    return _with_exhibits(says, point, phrases) if point.rule.topic == _ABOUT_NUMBERS else ""
+
+
+def _with_exhibits(words: str, point: Point, phrases: Phrases) -> str:
+    """The words, followed by the exhibits that they rest on."""
     if not point.exhibits:
-        return ""
+        return words
     numbers = [str(number) for number in point.exhibits]
     name = "point.exhibit" if len(numbers) == 1 else "point.exhibits"
     cited = phrases.say(name, number=numbers[0], numbers=joined(numbers))
-    return f"{render(point.rule.says, lookup).rstrip('.')} ({cited})."
+    return f"{words.rstrip('.')} ({cited})."
 
 
 def _why(rule: Rule, lookup: Lookup, case: CaseContent, phrases: Phrases) -> str:
-    parts = [render(rule.why, lookup)]
+    parts = [_told(rule.why, lookup, phrases)]
     for side, phrase in ((Side.FOR, "point.see"), (Side.COUNTER, "point.counter")):
         works = [short_citation(case.book.references[one.id]) for one in _cited(rule, case) if one.side is side]
         parts += [phrases.say(phrase, works=joined(works))] if works else []
@@ -190,7 +197,15 @@ def works_cited(told: Iterable[Point], case: CaseContent) -> tuple[str, ...]:
 
 
 def _cited(rule: Rule, case: CaseContent) -> list[Citation]:
-    return [one for one in rule.references if one.id in case.book.references]
+    """The works that the rule cites: at most two for the point and one for another view, those read here first."""
+    known = [one for one in rule.references if one.id in case.book.references]
+    known.sort(key=lambda one: not case.book.references[one.id].text_seen)
+    sides = ((Side.FOR, _MOST_WORKS), (Side.COUNTER, 1))
+    return [one for side, most in sides for one in [each for each in known if each.side is side][:most]]
+
+
+def _told(template: str, lookup: Lookup, phrases: Phrases) -> str:
+    return clean(phrases.spoken(render(template, lookup)))
 
 
 def _capital(words: str) -> str:

@@ -104,7 +104,7 @@ def _add_table(document: "Document", block: Table, style: Looks) -> None:
     right = [all(_NUMERIC.match(row[at]) or row[at] == "–" for row in block.rows) for at in range(len(block.columns))]
     for at, texts in enumerate((block.columns, *block.rows)):
         for cell, text, is_right in zip(table.rows[at].cells, texts, right, strict=True):
-            _fill(cell, text, is_right, is_last=at == len(block.rows))
+            _fill(cell, text, is_right, is_last=at == len(block.rows) and not block.note)
     _share_widths(table, block, style.text_width)
     _rule(table, style)
     if block.note:
@@ -127,10 +127,10 @@ def _share_widths(table: "DocxTable", block: Table, width_cm: float) -> None:
     from docx.shared import Cm
 
     needs = [
-        min(max(_NARROWEST_CELL, *(len(row[at]) for row in (block.columns, *block.rows))), _WIDEST_CELL)
+        min(max(_NARROWEST_CELL, *(len(row[at]) + 2 for row in (block.columns, *block.rows))), _WIDEST_CELL)
         for at in range(len(block.columns))
     ]
-    unit = min(width_cm / sum(needs), 0.28)  # a character of 9 points needs at most 0.28 cm with its padding
+    unit = min(width_cm / sum(needs), 0.22)  # a character of 9 points is at most about 0.22 cm wide
     for column, need in zip(table.columns, needs, strict=True):
         for cell in (column, *column.cells):
             cell.width = Cm(need * unit)

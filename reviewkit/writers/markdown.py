@@ -25,19 +25,21 @@ def write_markdown(note: Note, path: Path) -> None:
 
 def markdown_of(note: Note, names: dict[Figure, str]) -> str:
     """The note as markdown; `names` are the file names of its figures."""
-    parts = [f"# {escaped(note.title)}"]
+    parts = [f"# {_heading(note.title)}"]
     for section in note.sections:
         if section.title:
-            parts.append(f"{'#' * (section.level + 1)} {escaped(section.title)}")
+            parts.append(f"{'#' * (section.level + 1)} {_heading(section.title)}")
         parts += [_block(block, names) for block in section.blocks]
     return "\n\n".join(parts) + "\n"
 
 
 def escaped(text: str) -> str:
     """The text on one line, with everything that markdown would read as markup made literal."""
-    plain = _SPECIAL.sub(r"\\\1", clean(text).strip())
-    unlinked = _LINKED.sub(_unlinked, plain)
-    return _LINE_START.sub(r"\1\\\2", unlinked)
+    return _LINE_START.sub(r"\1\\\2", _heading(text))
+
+
+def _heading(text: str) -> str:
+    return _LINKED.sub(_unlinked, _SPECIAL.sub(r"\\\1", clean(text).strip()))
 
 
 def _unlinked(found: re.Match[str]) -> str:
@@ -46,12 +48,13 @@ def _unlinked(found: re.Match[str]) -> str:
 
 
 def _pictures(note: Note) -> dict[Figure, tuple[str, bytes]]:
-    figures = [block for section in note.sections for block in section.blocks if isinstance(block, Figure)]
-    drawn = {figure: draw(figure.data, FULL_CM) for figure in figures}
-    return {
-        figure: (f"figure-{at}-{hashlib.sha256(content).hexdigest()[:8]}.png", content)
-        for at, (figure, content) in enumerate(drawn.items(), 1)
-    }
+    figures = dict.fromkeys(block for section in note.sections for block in section.blocks if isinstance(block, Figure))
+    return {figure: (_picture_name(figure, at), draw(figure.data, FULL_CM)) for at, figure in enumerate(figures, 1)}
+
+
+def _picture_name(figure: Figure, at: int) -> str:
+    """A name by what is drawn, so that a later note leaves the pictures of an earlier one alone."""
+    return f"figure-{at}-{hashlib.sha256(repr(figure.data).encode()).hexdigest()[:8]}.png"
 
 
 def _block(block: Block, names: dict[Figure, str]) -> str:

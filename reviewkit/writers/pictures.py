@@ -17,7 +17,7 @@ _CM_IN_INCHES = 2.54
 _DPI = 300
 _INK, _ACCENT, _PALE = "#1a1a1a", "#0b5a8a", "#c9d6df"  # differ in lightness, so also in grey
 _MARKERS = ("o", "s", "D", "^", "v", "P")
-_STYLE: dict[str, Any] = {
+_STYLE = {
     "font.family": "DejaVu Sans",
     "font.size": 8.0,
     "axes.spines.top": False,
@@ -41,7 +41,8 @@ def draw(figure: FigureData, width_cm: float = COLUMN_CM) -> bytes:
 
     with matplotlib.rc_context():  # whatever the user's own settings are; they are put back afterwards
         matplotlib.rcdefaults()
-        matplotlib.rcParams.update(_STYLE)
+        settings: Any = matplotlib.rcParams
+        settings.update(_STYLE)
         page = Figure(figsize=(width_cm / _CM_IN_INCHES, _height_cm(figure, width_cm) / _CM_IN_INCHES), dpi=_DPI)
         FigureCanvasAgg(page)
         page.set_layout_engine("constrained")
