@@ -45,14 +45,14 @@ def entry_json(entry: Entry) -> Json:
     whole: dict[str, Json] = {"act": entry.act.value, "name": entry.name, "subject": entry.subject}
     if entry.value is not None:
         whole["value"] = value_json(entry.value)
-    whole |= {"place": entry.place, "quote": entry.quote, "text": entry.text, "understood": entry.understood}
-    return {key: each for key, each in whole.items() if each not in ("", None)}
+    more = {"place": entry.place, "quote": entry.quote, "text": entry.text, "understood": entry.understood}
+    return whole | {key: each for key, each in more.items() if each}
 
 
 def entry_from(record: Json, where: str) -> Entry:
     """The entry that `entry_json` wrote."""
     try:
-        value = value_from(record["value"]) if "value" in record else None
+        value = value_from(record["value"], where) if "value" in record else None
         texts = {key: str(record.get(key, "")) for key in ("name", "place", "quote", "text")}
         return Entry(
             Act(record["act"]),

@@ -5,7 +5,7 @@ import json
 import os
 import tomllib
 from collections.abc import Iterator, Mapping
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 from enum import StrEnum
 from pathlib import Path
 from typing import Any
@@ -64,8 +64,8 @@ class Settings:
     """What case.toml holds."""
 
     title: str = ""
-    inputs: Mapping[Input, Given] | None = None
-    policy: Mapping[Policy, str] | None = None
+    inputs: Mapping[Input, Given] = field(default_factory=dict)
+    policy: Mapping[Policy, str] = field(default_factory=dict)
     models: tuple[str, ...] = ("main",)
     claims: tuple[str, ...] = ("main",)
 
@@ -84,7 +84,7 @@ class CaseFolder:
 
     def given(self, kind: Input) -> Given | None:
         """The input of that kind."""
-        return (self.settings.inputs or {}).get(kind)
+        return self.settings.inputs.get(kind)
 
     def place(self, kind: Input) -> Path | None:
         """Where that input lies."""
@@ -158,13 +158,13 @@ def giving(case: CaseFolder, kind: Input, path: Path) -> CaseFolder:
     if not path.exists():
         raise Refusal(path.name, "there is no such file or folder", remedy="Check the path")
     sha256 = safekeeping.file_checksum(path) if path.is_file() else ""
-    inputs = {**(case.settings.inputs or {}), kind: Given(relative(path, case.path), sha256)}
+    inputs = {**case.settings.inputs, kind: Given(relative(path, case.path), sha256)}
     return save_settings(case, replace(case.settings, inputs=inputs))
 
 
 def with_policy(case: CaseFolder, policy: Policy, answer: str) -> CaseFolder:
     """The case with that policy fact written down at once."""
-    return save_settings(case, replace(case.settings, policy={**(case.settings.policy or {}), policy: answer}))
+    return save_settings(case, replace(case.settings, policy={**case.settings.policy, policy: answer}))
 
 
 def relative(path: Path, folder: Path) -> str:
@@ -178,8 +178,8 @@ def relative(path: Path, folder: Path) -> str:
 def _settings_text(settings: Settings) -> str:
     lines = [f"format = {FORMAT}", f"title = {_quoted(settings.title)}"]
     lines += [f"models = {_listed(settings.models)}", f"claims = {_listed(settings.claims)}", "", "[policy]"]
-    lines += [f"{name} = {_quoted(answer)}" for name, answer in (settings.policy or {}).items()]
-    for kind, given in (settings.inputs or {}).items():
+    lines += [f"{name} = {_quoted(answer)}" for name, answer in settings.policy.items()]
+    for kind, given in settings.inputs.items():
         lines += ["", f"[inputs.{kind}]", f"path = {_quoted(given.path)}", f"sha256 = {_quoted(given.sha256)}"]
     return "\n".join(lines) + "\n"
 
@@ -236,7 +236,8 @@ def save_proposals(case: CaseFolder, facts: tuple[Fact, ...]) -> None:
 
 def read_proposals(case: CaseFolder) -> tuple[Fact, ...]:
     """What was proposed."""
-    return tuple(fact_from(each) for each in _read_json(case.path / PROPOSALS, {"facts": []})["facts"])
+    with as_we_wrote_it(PROPOSALS):
+        return tuple(fact_from(each) for each in _read_json(case.path / PROPOSALS, {"facts": []})["facts"])
 
 
 def save_columns(case: CaseFolder, columns: Json, sha256: str) -> None:
@@ -261,6 +262,15 @@ def save_results(case: CaseFolder, model: str, results: Json) -> Path:
 def read_results(case: CaseFolder, model: str = "main") -> Json | None:
     """The results of that model's last re-estimation, if there are any."""
     return _read_json(case.results(model), None)
+
+
+@contextlib.contextmanager
+def as_we_wrote_it(name: str) -> Iterator[None]:
+    """Turn a file of ours that holds something else into one message."""
+    try:
+        yield
+    except (KeyError, TypeError, ValueError, AttributeError):
+        raise Refusal(name, "this is not as ReviewKit wrote it", remedy="Delete it and repeat the command") from None
 
 
 def _save_json(path: Path, content: Json) -> None:
@@ -314,8 +324,8 @@ def _numbered(path: Path) -> Iterator[Path]:
 
 
 def _written(case: CaseFolder) -> dict[str, str]:
-    record: dict[str, str] = _read_json(case.path / WRITTEN, {"files": {}})["files"]
-    return record
+    with as_we_wrote_it(WRITTEN):
+        return dict(_read_json(case.path / WRITTEN, {"files": {}})["files"])
 
 
 def _remember(case: CaseFolder, path: Path, content: bytes) -> None:

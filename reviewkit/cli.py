@@ -70,7 +70,7 @@ def begin(
         return
     for line in said:
         print(line)
-    if len(folder.settings.policy or {}) < len(review.POLICY_QUESTIONS):
+    if len(folder.settings.policy) < len(review.POLICY_QUESTIONS):
         print("The journal's policy on software and confidentiality is not looked at yet; `begin` asks for it.")
     print(f"Next: reviewkit interview {_shown(case)}")
 
@@ -249,19 +249,20 @@ def check_rules(
 
 def _after(looked: "Review", as_json: bool) -> None:
     from reviewkit import overview, review
+    from reviewkit.rules import State
 
     if as_json:
         _give(overview.overview_json(looked))
         return
-    raised = len(looked.in_state("raised"))  # type: ignore[arg-type]
-    waiting = len(looked.in_state("open"))  # type: ignore[arg-type]
-    print(f"Points raised: {raised}. Open: {waiting}.")
+    print(f"Points raised: {len(looked.in_state(State.RAISED))}. Open: {len(looked.in_state(State.OPEN))}.")
     print(f"Next: {review.next_step_of(looked)}")
 
 
 def _alert(looked: "Review", alert_on: AlertOn) -> None:
+    from reviewkit.rules import State
+
     weights = {"minor": 1, "major": 2}
-    raised = max((weights[each.importance.value] for each in looked.in_state("raised")), default=0)  # type: ignore[arg-type]
+    raised = max((weights[each.importance.value] for each in looked.in_state(State.RAISED)), default=0)
     if alert_on is not AlertOn.NEVER and raised >= weights[alert_on.value]:
         raise typer.Exit(1)
 

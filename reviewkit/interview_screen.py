@@ -84,7 +84,7 @@ _POLICY_CHOICES = (Choice("yes"), Choice("no"), Choice("not stated", "the policy
 
 def ask_policy(case: CaseFolder, screen: Screen) -> CaseFolder:
     """Ask what the journal's policy says, each answer written down at once; leaving early leaves the rest open."""
-    asked = [each for each in review.POLICY_QUESTIONS if each not in (case.settings.policy or {})]
+    asked = [each for each in review.POLICY_QUESTIONS if each not in case.settings.policy]
     if asked:
         screen.write("First, the journal's policy. `q` leaves the rest of these questions open.")
     try:

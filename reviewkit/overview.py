@@ -10,6 +10,10 @@ from reviewkit.review import POLICY_QUESTIONS, Review, needs_refit, next_step_of
 from reviewkit.rules import Finding, Importance, State
 
 
+MOST_MISSING = 3
+"""Facts named behind an open point."""
+
+
 @dataclass(frozen=True, slots=True)
 class Part:
     """A heading with its lines; each line is a sentence or an entry of a list."""
@@ -83,7 +87,9 @@ def _case_lines(review: Review) -> tuple[str, ...]:
         lines.append("results: older than specification or data" if review.results.is_old else "results: current")
     elif needs_refit(review):
         lines.append("results: none yet")
-    policy = case.settings.policy or {}
+    policy = case.settings.policy
+    if not policy:
+        return (*lines, "journal's policy: not looked at; `reviewkit begin` asks for it")
     lines.append(
         "journal's policy: "
         + "; ".join(f"{_POLICY_WORDS[each]}: {policy.get(each, 'not looked at')}" for each in POLICY_QUESTIONS)
@@ -138,7 +144,9 @@ def _clear_line(finding: Finding) -> str:
 def _open_lines(review: Review) -> tuple[str, ...]:
     lines = []
     for finding in _by_importance(review.in_state(State.OPEN)):
-        labels = [_label(review, name) for name in finding.missing]
+        labels = [_label(review, name) for name in finding.missing[:MOST_MISSING]]
+        more = len(finding.missing) - len(labels)
+        labels += [f"{more} more"] if more > 0 else []
         waits = f" waits for: {', '.join(labels)}" if labels else ""
         lines.append(
             f"{finding.importance.value}: {finding.rule.title};{waits}"

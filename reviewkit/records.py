@@ -32,7 +32,7 @@ def value_json(value: Value) -> Json:
             return value
 
 
-def value_from(record: Json) -> Value:
+def value_from(record: Json, where: str = "a recorded value") -> Value:
     """The value that `value_json` wrote."""
     match record:
         case {"not_stated": True}:
@@ -48,7 +48,7 @@ def value_from(record: Json) -> Value:
         case str():
             return record
         case _:
-            raise Refusal("a recorded value", f"`{str(record)[:40]}` is not one that ReviewKit writes")
+            raise Refusal(where, f"`{str(record)[:40]}` is not one that ReviewKit writes")
 
 
 def fact_json(fact: Fact) -> Json:

@@ -6,9 +6,9 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from reviewkit import casefolder, safekeeping, shipped
-from reviewkit.answers import SPECIFYING, Act, Entry, remarks
+from reviewkit.answers import SPECIFYING, Entry, remarks
 from reviewkit.casefolder import CaseFolder, Input, Policy
-from reviewkit.decisions import Disagreement, decide, disagreements
+from reviewkit.decisions import Disagreement, decide, disagreements, next_question
 from reviewkit.exhibit import Exhibit
 from reviewkit.facts import Fact, Facts, Source, SourceKind, Standing
 from reviewkit.interview import Interview, facts_of, specifying
@@ -88,9 +88,10 @@ def read_inputs(case: CaseFolder) -> tuple[CaseFolder, tuple[str, ...]]:
     """Read manuscript and data as far as policy allows; what was found, in sentences."""
     said: list[str] = []
     with casefolder.working_in(case):
-        if (case.settings.policy or {}).get(Policy.SOFTWARE) == "no":
+        manuscript = case.place(Input.MANUSCRIPT)
+        if manuscript is not None and case.settings.policy.get(Policy.SOFTWARE) == "no":
             said.append("The journal allows no software on the manuscript, so it was not read.")
-        elif (manuscript := case.place(Input.MANUSCRIPT)) is not None:
+        elif manuscript is not None:
             case, proposed = _read_manuscript(case, manuscript)
             said.append(_counted_readings(proposed))
         if (data := case.place(Input.DATA)) is not None:
@@ -305,9 +306,10 @@ def read_results(case: CaseFolder, model: str = "main") -> Results | None:
     kept = casefolder.read_results(case, model)
     if kept is None:
         return None
-    exhibits = tuple(exhibit_from(each) for each in kept["exhibits"])
-    facts = tuple(fact_from(each) for each in kept["facts"])
-    return Results(exhibits, facts, kept["content"], _is_old(case, model, kept))
+    with casefolder.as_we_wrote_it(case.results(model).name):
+        exhibits = tuple(exhibit_from(each) for each in kept["exhibits"])
+        facts = tuple(fact_from(each) for each in kept["facts"])
+        return Results(exhibits, facts, kept["content"], _is_old(case, model, kept))
 
 
 def _is_old(case: CaseFolder, model: str, kept: Json) -> bool:
@@ -344,14 +346,14 @@ def next_step_of(review: Review) -> str:
     case = _shown_path(review.case.path)
     if needs_refit(review):
         return f"reviewkit refit {case}"
-    if review.in_state(State.OPEN) and not any(each.act is Act.ANSWER for each in review.entries):
-        return f"reviewkit interview {case}"
-    return f"reviewkit draft {case}"
+    if next_question(review.facts, review.book) is None:
+        return f"reviewkit draft {case}"
+    return f"reviewkit interview {case}   (or, as it stands: reviewkit draft {case})"
 
 
 def owed(case: CaseFolder) -> tuple[str, ...]:
     """What the journal's policy leaves to do once the notes are written."""
-    policy = case.settings.policy or {}
+    policy = case.settings.policy
     said = []
     if policy.get(Policy.DECLARE) == "yes":
         said.append("To do: the journal wants the use of software declared; the note to the editor says it.")

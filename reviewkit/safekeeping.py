@@ -11,6 +11,7 @@ import sys
 import time
 from collections.abc import Iterator
 from pathlib import Path
+from typing import BinaryIO
 
 from reviewkit.refusals import NotEstimable, Refusal
 
@@ -49,15 +50,9 @@ def write_atomically(path: Path, content: str | bytes) -> None:
 def append_line(path: Path, line: str) -> None:
     """Add one finished line and return only when the disk has it; a torn end left by a kill is cut off first."""
     with refusing(path, "written"), path.open("ab+") as file:
-        size = file.seek(0, os.SEEK_END)
-        file.seek(0)
-        whole = _whole_length(file.read())
-        if whole < size:
-            file.truncate(whole)
-        file.seek(0, os.SEEK_END)
-        start = file.tell()
+        start = _cut_torn_end(file)
         try:
-            file.write(line.encode() + b"\n")
+            file.write(line.encode(errors="replace") + b"\n")
             file.flush()
             os.fsync(file.fileno())
         except OSError:
@@ -73,9 +68,22 @@ def read_lines(path: Path) -> tuple[str, ...]:
     with refusing(path, "read"):
         content = path.read_bytes()
     try:
-        return tuple(content[: _whole_length(content)].decode().splitlines())
+        return tuple(content[: _whole_length(content)].decode().split("\n")[:-1])
     except UnicodeDecodeError:
         raise Refusal(path.name, "this is not UTF-8 text", remedy="Bring back a copy of the file") from None
+
+
+def _cut_torn_end(file: BinaryIO) -> int:
+    """Take off what stands behind the last finished line; where the file then ends."""
+    size = file.seek(0, os.SEEK_END)
+    if size == 0:
+        return 0
+    file.seek(size - 1)
+    if file.read(1) != b"\n":
+        file.seek(0)
+        size = file.truncate(_whole_length(file.read()))
+    file.seek(0, os.SEEK_END)
+    return size
 
 
 def _whole_length(content: bytes) -> int:

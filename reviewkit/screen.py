@@ -10,9 +10,9 @@ from reviewkit.prompts import Choice, Prompt
 LIST_AT_ONCE = 15
 WIDEST = 92
 COMMANDS = (
-    "At any question:  ? explains   b goes back   s not looked at   n the paper doesn't say",
-    "                  q leaves, all is kept   r WORDS a remark for yourself and the editor",
-    "After an answer, ` @ p. 11` notes where you saw it.",
+    "At any question:  ? explains   b goes back   s not looked at   q leaves, all is kept",
+    "  n the paper doesn't say   r WORDS a remark, for you and the editor only",
+    "  Behind an answer, ` @ p. 11` notes where you saw it.",
 )
 
 
@@ -51,7 +51,9 @@ def show_prompt(prompt: Prompt, screen: Screen) -> None:
     screen.write("")
     screen.strong(prompt.question)
     if prompt.found_in:
-        screen.faint(f"Look in: {prompt.found_in}.", "  ")
+        waits = len(prompt.waiting)
+        points = f" {'1 point waits' if waits == 1 else f'{waits} points wait'} on it." if waits else ""
+        screen.faint(f"Look in: {prompt.found_in}.{points}", "  ")
     shown = len(prompt.choices) if len(prompt.choices) <= LIST_AT_ONCE + 5 else LIST_AT_ONCE
     show_choices(prompt.choices, screen, shown)
     if prompt.hint:

@@ -119,7 +119,7 @@ def problem_with(state: Specifying) -> str:
 
 
 def _data(state: Specifying) -> Prompt:
-    files = tuple(Choice(each) for each in state.files)
+    files = tuple(Choice(each, each.rpartition("/")[2]) for each in state.files)
     return _prompt(
         "data",
         "Which data file was the model fitted on?",
