@@ -83,7 +83,7 @@ def _filled(text: str, lookup: Lookup) -> str | None:
 
 
 def _showable(value: Value | None) -> bool:
-    if value is None or value == () or isinstance(value, NotStated):
+    if value is None or value in ((), "") or isinstance(value, NotStated):
         return False
     return not isinstance(value, float) or math.isfinite(value)
 
