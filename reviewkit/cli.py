@@ -2,7 +2,7 @@
 
 import os
 import sys
-from contextlib import suppress
+from contextlib import contextmanager, suppress
 from enum import StrEnum
 from pathlib import Path
 from typing import TYPE_CHECKING, Annotated, Any
@@ -12,10 +12,14 @@ import typer
 from reviewkit.refusals import Refusal
 
 if TYPE_CHECKING:
+    from collections.abc import Callable, Iterator
+
     from reviewkit.review import Review
     from reviewkit.screen import Screen
 
 FAILED = 3
+INTERRUPTED = 130
+"""What typer makes of Ctrl-C."""
 app = typer.Typer(
     name="reviewkit",
     help="Evidence and neutral comments on regressions with a transformed outcome.",
@@ -135,11 +139,13 @@ def refit(
     from reviewkit import casefolder, review
 
     if case_or_spec.suffix == ".toml" and not case_or_spec.is_dir():
-        _show_refit(review.reestimate_file(case_or_spec, _progress(plain)), (), as_json, plain)
+        with _progress(plain) as progress:
+            estimated = review.reestimate_file(case_or_spec, progress)
+        _show_refit(estimated, (), as_json, plain)
         return
     folder = casefolder.open_case(case_or_spec)
-    with casefolder.working_in(folder):
-        estimated = review.refit(folder, model, _progress(plain))
+    with casefolder.working_in(folder), _progress(plain) as progress:
+        estimated = review.refit(folder, model, progress)
     looked = review.look(case_or_spec)
     _show_refit(estimated, looked.findings, as_json, plain)
     if not as_json:
@@ -162,8 +168,8 @@ def draft(
     looked = review.look(case)
     if review.needs_refit(looked):
         _aside("Specification or data are newer than the results; re-estimating first.")
-        with casefolder.working_in(looked.case):
-            review.refit(looked.case, progress=_progress(plain))
+        with casefolder.working_in(looked.case), _progress(plain) as progress:
+            review.refit(looked.case, progress=progress)
     written = drafting.draft(case, tuple(each.strip() for each in formats.split(",") if each.strip()), request)
     if as_json:
         _give({"format": 1, "files": [path.name for path, _ in written]})
@@ -288,8 +294,18 @@ def _aside(text: str) -> None:
     print(text, file=sys.stderr)
 
 
-def _progress(plain: bool) -> Any:
-    return lambda text: _aside(f"{text} …")
+@contextmanager
+def _progress(plain: bool) -> "Iterator[Callable[[str], None]]":
+    """Says what is being done: one line that changes on a terminal, elsewhere a line every few seconds."""
+    from reviewkit.screen import now_and_then
+
+    if _is_plain(plain, sys.stderr):
+        yield now_and_then(_aside)
+        return
+    try:
+        yield lambda text: print(f"\r\033[K{text} …", end="", file=sys.stderr, flush=True)
+    finally:
+        print("\r\033[K", end="", file=sys.stderr, flush=True)
 
 
 def _is_plain(plain: bool, stream: Any = None) -> bool:
@@ -341,6 +357,8 @@ def run(arguments: list[str]) -> int:
     """The exit status of a command; refusals and surprises become one line on standard error."""
     try:
         status = app(_completed(arguments), prog_name="reviewkit", standalone_mode=False)
+        if status == INTERRUPTED:
+            raise KeyboardInterrupt
         return status if isinstance(status, int) else 0
     except Refusal as refusal:
         _aside(f"reviewkit: {' '.join(refusal.message().split())}")

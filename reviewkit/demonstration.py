@@ -8,6 +8,7 @@ from pathlib import Path
 from reviewkit import casefolder, drafting, review, shipped, unattended
 from reviewkit.casefolder import Input
 from reviewkit.refusals import Refusal
+from reviewkit.screen import now_and_then
 
 STUDY = "study.toml"
 
@@ -46,6 +47,7 @@ def _answer_and_draft(
     with casefolder.working_in(case):
         say(f"{name}: interview, {unattended.take_answers(case, answers)} answers from {answers.name}")
         if review.specification_of(case) is not None:
-            review.refit(case, progress=lambda text: say(f"{name}: {text} …"))
+            say(f"{name}: refit")
+            review.refit(case, progress=now_and_then(lambda text: say(f"{name}: {text}")))
     say(f"{name}: draft")
     return tuple(path for path, _ in drafting.draft(case.path))

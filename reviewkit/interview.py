@@ -115,6 +115,8 @@ def shown_value(definition: FactDefinition | None, value: Value) -> str:
         return "not stated"
     if isinstance(value, Printed):
         return value.text
+    if value == ():
+        return "none"
     if definition is not None and definition.unit == "share" and isinstance(value, float):
         return share(value)
     return text(value)
@@ -195,7 +197,7 @@ def _hint(definition: FactDefinition) -> str:
 
 def where_from(fact: Fact) -> str:
     """Where a fact comes from, in a few words."""
-    place = f" ({fact.source.place})" if fact.source.place else ""
+    place = f", {fact.source.place}" if fact.source.place else ""
     words = {"manuscript": "the paper says", "script": "the script has", "column": "the data show"}
     words |= {
         "exhibit": "the re-estimation shows",

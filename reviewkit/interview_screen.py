@@ -19,7 +19,16 @@ from reviewkit.interview import (
 from reviewkit.prompts import Answered, Choice, Command, Commanded, Form, Matches, Prompt, Reply, Unclear, read_reply
 from reviewkit.records import Json
 from reviewkit.refusals import Refusal
-from reviewkit.screen import COMMANDS, LIST_AT_ONCE, Screen, explain, show_choice, show_choices, show_prompt
+from reviewkit.screen import (
+    COMMANDS,
+    LIST_AT_ONCE,
+    Screen,
+    explain,
+    now_and_then,
+    show_choice,
+    show_choices,
+    show_prompt,
+)
 from reviewkit.specifying import next_step, problem_with
 
 
@@ -249,7 +258,7 @@ def _finished(session: Session) -> Session:
     kept = "was edited by hand and is kept as it is"
     screen.say(f"{name} {'holds the specification; you may edit it' if written else kept}.", "  ")
     try:
-        estimated = review.refit(session.case, progress=lambda text: screen.faint(f"{text} …", "  "))
+        estimated = review.refit(session.case, progress=now_and_then(lambda text: screen.faint(text, "  ")))
         for warning in estimated.warnings:
             screen.say(str(warning), "  ")
         screen.say("Re-estimated: what the data show need not be asked.", "  ")

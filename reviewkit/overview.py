@@ -3,12 +3,12 @@
 from dataclasses import dataclass
 
 from reviewkit.casefolder import Input, Policy
+from reviewkit.derived import needs
 from reviewkit.facts import Fact, Standing
 from reviewkit.interview import shown_value, where_from
 from reviewkit.records import Json, fact_json
 from reviewkit.review import POLICY_QUESTIONS, Review, needs_refit, next_step_of, specification_of
 from reviewkit.rules import Finding, Importance, State
-
 
 MOST_MISSING = 3
 """Facts named behind an open point."""
@@ -142,18 +142,28 @@ def _clear_line(finding: Finding) -> str:
 
 
 def _open_lines(review: Review) -> tuple[str, ...]:
-    lines = []
+    """What waits for answers, a line each; what waits for data alone, in one line."""
+    lines, for_data = [], []
     for finding in _by_importance(review.in_state(State.OPEN)):
-        labels = [_label(review, name) for name in finding.missing[:MOST_MISSING]]
-        more = len(finding.missing) - len(labels)
-        labels += [f"{more} more"] if more > 0 else []
-        waits = f" waits for: {', '.join(labels)}" if labels else ""
-        lines.append(
-            f"{finding.importance.value}: {finding.rule.title};{waits}"
-            if waits
-            else f"{finding.importance.value}: {finding.rule.title}"
-        )
-    return tuple(lines)
+        asked = [name for name in finding.missing if _is_asked(review, name)]
+        if asked or not finding.missing:
+            lines.append(f"{finding.importance.value}: {finding.rule.title}{_waiting(review, asked)}")
+        else:
+            for_data.append(finding.rule.title)
+    return (*lines, *((f"need data that can be re-estimated: {'; '.join(for_data)}",) if for_data else ()))
+
+
+def _is_asked(review: Review, name: str) -> bool:
+    """Whether a person can answer for it, rather than data alone."""
+    needed = (review.book.vocabulary.get(each) for each in (name, *needs(name)))
+    return any(each is not None and each.asked for each in needed)
+
+
+def _waiting(review: Review, names: list[str]) -> str:
+    labels = [_label(review, name) for name in names[:MOST_MISSING]]
+    more = len(names) - len(labels)
+    labels += [f"{more} more"] if more > 0 else []
+    return f"; waits for: {', '.join(labels)}" if labels else ""
 
 
 def _label(review: Review, name: str) -> str:

@@ -1,6 +1,7 @@
 """Words on a terminal, a pipe or a screen reader: lines only, folded to the width, nothing redrawn."""
 
 import textwrap
+import time
 from collections.abc import Callable
 from dataclasses import dataclass
 
@@ -44,6 +45,19 @@ class Screen:
         """Write what may be passed over."""
         for line in _folded(text, min(self.width, WIDEST), indent, indent):
             self.quiet(line)
+
+
+def now_and_then(say: Callable[[str], None], seconds: float = 2.0) -> Callable[[str], None]:
+    """Passes progress on at most every few seconds, and not at all where everything is over sooner."""
+    last = time.monotonic()
+
+    def tell(text: str) -> None:
+        nonlocal last
+        if time.monotonic() - last >= seconds:
+            last = time.monotonic()
+            say(f"{text} …")
+
+    return tell
 
 
 def show_prompt(prompt: Prompt, screen: Screen) -> None:

@@ -92,6 +92,10 @@ def specification_values(state: Specifying) -> dict[str, Any]:
     }
     outcome |= {"column": str(state.answers["outcome"])} if "outcome" in state.answers else {}
     errors = {**state.understood.get("errors", {}), **_errors(state)}
+    if errors.get("kind") == ErrorKind.CLUSTER and not errors.get("by"):
+        del errors["kind"]  # until the next answer names the column
+    if outcome.get("zeros") == "replaced" and "replacement" not in outcome:
+        del outcome["zeros"]
     values: dict[str, Any] = {
         "data": state.answers.get("data", ""),
         "outcome": outcome,
