@@ -15,6 +15,7 @@ if TYPE_CHECKING:
     from collections.abc import Callable, Iterator
 
     from reviewkit.review import Review
+    from reviewkit.rules import Finding
     from reviewkit.screen import Screen
 
 FAILED = 3
@@ -124,7 +125,7 @@ def show(
             for line in part.lines:
                 screen.say(line, "  ", "    ")
             screen.write("")
-    _alert(looked, alert_on)
+    _alert(looked.findings, alert_on)
 
 
 @app.command()
@@ -141,7 +142,9 @@ def refit(
     if case_or_spec.suffix == ".toml" and not case_or_spec.is_dir():
         with _progress(plain) as progress:
             estimated = review.reestimate_file(case_or_spec, progress)
-        _show_refit(estimated, (), as_json, plain)
+        findings = review.findings_of(estimated)
+        _show_refit(estimated, findings, as_json, plain)
+        _alert(findings, alert_on)
         return
     folder = casefolder.open_case(case_or_spec)
     with casefolder.working_in(folder), _progress(plain) as progress:
@@ -150,7 +153,7 @@ def refit(
     _show_refit(estimated, looked.findings, as_json, plain)
     if not as_json:
         _aside(f"Kept in {_shown(folder.path / casefolder.RESULTS)}. Next: {review.next_step_of(looked)}")
-    _alert(looked, alert_on)
+    _alert(looked.findings, alert_on)
 
 
 @app.command()
@@ -177,7 +180,7 @@ def draft(
         print(f"{_shown(path)}{'   (the earlier file was edited or is open, and is kept)' if beside else ''}")
     for owed in review.owed(looked.case) if not as_json else ():
         print(owed)
-    _alert(review.look(case), alert_on)
+    _alert(review.look(case).findings, alert_on)
 
 
 @app.command()
@@ -264,16 +267,16 @@ def _after(looked: "Review", as_json: bool) -> None:
     print(f"Next: {review.next_step_of(looked)}")
 
 
-def _alert(looked: "Review", alert_on: AlertOn) -> None:
+def _alert(findings: "tuple[Finding, ...]", alert_on: AlertOn) -> None:
     from reviewkit.rules import State
 
     weights = {"minor": 1, "major": 2}
-    raised = max((weights[each.importance.value] for each in looked.in_state(State.RAISED)), default=0)
+    raised = max((weights[each.importance.value] for each in findings if each.state is State.RAISED), default=0)
     if alert_on is not AlertOn.NEVER and raised >= weights[alert_on.value]:
         raise typer.Exit(1)
 
 
-def _show_refit(estimated: Any, findings: Any, as_json: bool, plain: bool) -> None:
+def _show_refit(estimated: Any, findings: "tuple[Finding, ...]", as_json: bool, plain: bool) -> None:
     if as_json:
         from reviewkit.writers.refit_json import refit_object
 

@@ -271,6 +271,12 @@ def refit(case: CaseFolder, model: str = "main", progress: Progress | None = Non
     return estimated
 
 
+def findings_of(estimated: "Reestimation") -> tuple[Finding, ...]:
+    """What the rules make of a re-estimation alone, with nothing known of the paper but its printed figures."""
+    linked = Facts().linked(CLAIM, MAIN).linked(MAIN, DATA)
+    return decide(linked.adding(printed_facts(estimated.specification)).adding(estimated.facts), rule_book())
+
+
 def _table(path: Path, progress: Progress | None) -> "Table":
     from reviewkit.readers.tables import read_table
 

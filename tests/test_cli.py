@@ -61,7 +61,8 @@ def test_the_command_line_imports_nothing_numerical_and_nothing_that_draws():
 
 def test_an_interview_imports_nothing_numerical(case):
     heavy = ("numpy", "pandas", "scipy", "statsmodels", "matplotlib", "docx")
-    script = f"import sys; from reviewkit.cli import run; run(['interview', sys.argv[1]]); print([each for each in {heavy} if each in sys.modules])"
+    script = "import sys; from reviewkit.cli import run; run(['interview', sys.argv[1]]); "
+    script += f"print([each for each in {heavy} if each in sys.modules])"
     done = subprocess.run(
         [sys.executable, "-c", script, str(case)], input="\nq\n", capture_output=True, text=True, check=True
     )

@@ -36,7 +36,7 @@ def without_specification(**more) -> Interview:
     return Interview(LINKED, BOOK, specified=True, **more)
 
 
-# --- replies ----------------------------------------------------------------------------------------------------------
+# --- replies ---------------------------------------------------------------------------------------------------------
 
 TRANSFORM = Prompt("t", "?", Form.ONE, choices=tuple(map(Choice, ("none", "log", "log plus", "asinh", "square root"))))
 YES_NO = Prompt(
@@ -146,7 +146,7 @@ def test_no_reply_breaks_any_prompt(typed):
             read_reply(replace(prompt, form=form), typed)
 
 
-# --- answers and undoing ------------------------------------------------------------------------------------------------
+# --- answers and undoing ---------------------------------------------------------------------------------------------
 
 NAMES = st.sampled_from(["a", "b", "c", "d"])
 ANSWERS = st.builds(
@@ -192,7 +192,7 @@ def test_there_is_nothing_to_undo_at_the_beginning():
     assert undoing((Entry(Act.REMARK, text="x"),)) == ()
 
 
-# --- the rules' questions -------------------------------------------------------------------------------------------------
+# --- the rules' questions --------------------------------------------------------------------------------------------
 
 
 def answered_by(interview: Interview, choose) -> Interview:
@@ -279,7 +279,7 @@ def test_the_next_question_comes_within_a_tenth_of_a_second():
     assert slowest < 0.1
 
 
-# --- proposals ---------------------------------------------------------------------------------------------------------
+# --- proposals -------------------------------------------------------------------------------------------------------
 
 
 def reading(name: str, value, place="paragraph 12") -> Fact:
@@ -327,7 +327,7 @@ def test_an_answer_outweighs_a_reading():
     assert [each.name for each in proposals(interview)] == ["outcome.transform", "estimator"]
 
 
-# --- building a specification --------------------------------------------------------------------------------------------
+# --- building a specification ----------------------------------------------------------------------------------------
 
 
 def specified_with(answers: dict, understood=None, columns=COLUMNS):

@@ -1,0 +1,315 @@
+"""The interview on its screens: scripted, over a pipe, and in a real terminal."""
+
+import os
+import re
+import shutil
+import subprocess
+import sys
+import time
+
+import pytest
+
+from reviewkit import casefolder, review
+from reviewkit.answers import Act
+from reviewkit.casefolder import Input, Policy
+from reviewkit.interview_screen import ask_policy, closing, hold
+from reviewkit.screen import Screen, now_and_then
+from reviewkit.shipped import demo_folder
+
+DATA = demo_folder() / "drop-off-bays" / "landings.csv"
+LISTS = ["", "", "netting_kg", "log of", "2 @ p. 4", "", "bay length years km_site area"]
+
+
+class Scripted:
+    """Replies one after another; looks at the disk whenever it is asked."""
+
+    def __init__(self, replies, folder=None):
+        self.replies, self.folder, self.written, self.on_disk = list(replies), folder, [], []
+
+    def read(self, prompt):
+        if self.folder is not None:
+            self.on_disk.append(len(casefolder.read_entries(casefolder.open_case(self.folder))))
+        if not self.replies:
+            raise EOFError
+        return self.replies.pop(0)
+
+    def screen(self, width=80, styled=False):
+        return Screen(self.read, self.written.append, width, styled)
+
+    @property
+    def text(self):
+        return "\n".join(self.written)
+
+
+@pytest.fixture
+def folder(tmp_path):
+    return casefolder.make_case(tmp_path / "case").path
+
+
+def held(folder, replies, width=80, styled=False):
+    script = Scripted(replies, folder)
+    case, interview = review.open_interview(folder)
+    done = hold(case, interview, script.screen(width, styled))
+    return script, done
+
+
+def test_every_answer_is_on_the_disk_before_the_next_question(folder):
+    script, _ = held(folder, ["", "log", "none", "clustered", "1"])
+    assert script.on_disk == [0, 1, 2, 3, 4, 5]
+
+
+def test_leaving_and_coming_back_goes_on_where_one_left(folder):
+    first, done = held(folder, ["", "log", "q"])
+    assert done.left
+    second, _ = held(folder, ["q"])
+    assert "outcome transformed" in first.text
+    assert "outcome transformed" not in second.text
+    assert len(casefolder.read_entries(casefolder.open_case(folder))) == 2
+
+
+def test_going_back_asks_again_and_keeps_the_trail(folder):
+    script, _ = held(folder, ["", "log", "b", "square root", "q"])
+    assert script.text.count("How is the outcome transformed") == 2
+    acts = [each.act for each in casefolder.read_entries(casefolder.open_case(folder))]
+    assert acts == [Act.ANSWER, Act.ANSWER, Act.UNDO, Act.ANSWER]
+    known = review.look(folder).facts.known("outcome.transform", "model:main")
+    assert known.value == "square root"
+
+
+def test_help_says_where_to_look_why_and_what_waits(folder):
+    script, _ = held(folder, ["", "?"])
+    assert "Where to look" in script.text
+    assert "Asked because" in script.text
+
+
+def test_a_remark_is_kept_and_the_question_stays(folder):
+    script, _ = held(folder, ["", "r units look odd", "q"])
+    assert script.text.count("How is the outcome transformed") == 2
+    assert [each.text for each in casefolder.read_entries(casefolder.open_case(folder)) if each.act is Act.REMARK] == [
+        "units look odd"
+    ]
+
+
+def test_one_may_answer_everything_with_what_was_not_looked_at(folder):
+    script, done = held(folder, [""] + ["s"] * 60)
+    assert not done.left
+    closing(done, script.screen())
+    assert "never fine" in script.text
+
+
+@pytest.mark.parametrize("width", [24, 40, 80, 200])
+def test_lines_keep_to_the_width(folder, width):
+    script, _ = held(folder, ["", "?", "log", "q"], width)
+    long = [line for line in script.written if len(line) > max(width, 40) and " " in line.strip()]
+    assert [line for line in long if not line.lstrip().startswith(("At any", "n the", "Behind"))] == []
+
+
+def test_nothing_is_coloured_or_redrawn_unless_the_screen_can(folder):
+    script, _ = held(folder, ["", "?", "log", "q"])
+    assert "\033" not in script.text
+    assert "\r" not in script.text
+
+
+def test_a_styled_screen_says_the_same_words(folder, tmp_path):
+    other = casefolder.make_case(tmp_path / "other").path
+    plain, _ = held(folder, ["", "?", "log", "q"])
+    styled, _ = held(other, ["", "?", "log", "q"], styled=True)
+    assert re.sub(r"\033\[\d+m", "", styled.text) == plain.text
+
+
+def test_policy_answers_are_kept_one_by_one(folder):
+    script = Scripted(["n", "yes", "no", "q"])
+    case = ask_policy(casefolder.open_case(folder), script.screen())
+    assert case.settings.policy == {Policy.SOFTWARE: "yes", Policy.SHARING: "no"}
+    assert casefolder.open_case(folder).settings == case.settings
+    again = Scripted(["3"])
+    case = ask_policy(case, again.screen())
+    assert case.settings.policy[Policy.DECLARE] == "not stated"
+    assert "May software" not in again.text
+
+
+def test_where_software_is_not_allowed_the_manuscript_is_not_read(folder, tmp_path):
+    paper = tmp_path / "paper.docx"
+    paper.write_bytes(b"not even a document")
+    case = casefolder.giving(casefolder.open_case(folder), Input.MANUSCRIPT, paper)
+    case, said = review.read_inputs(casefolder.with_policy(case, Policy.SOFTWARE, "no"))
+    assert "not read" in said[0]
+
+
+def test_progress_is_silent_where_all_is_over_soon():
+    said = []
+    for number in range(50):
+        now_and_then(said.append)(str(number))
+    assert said == []
+    tell = now_and_then(said.append, 0.0)
+    tell("fitting")
+    assert said == ["fitting …"]
+
+
+# --- the specification on the screen ------------------------------------------------------------------------------
+
+FROM_LISTS = ["", "", "netting", "log_plus", "1", "bay length_m years km_site area", "bay", "", "cluster", "harbour"]
+FIGURES = ["0.506", "0,064", "2,931"]
+
+
+@pytest.fixture
+def with_data(folder):
+    case = casefolder.giving(casefolder.open_case(folder), Input.DATA, DATA)
+    review.read_inputs(case)
+    return folder
+
+
+def test_lists_build_the_specification_and_what_the_data_show_is_not_asked(with_data):
+    script, _ = held(with_data, [*FROM_LISTS, *FIGURES, "q"])
+    spec = review.specification_of(casefolder.open_case(with_data))
+    assert (spec.outcome.column, spec.errors.by, spec.printed_n.text) == ("netting_kg", ("harbour",), "2,931")
+    assert "Re-estimated" in script.text
+    known = review.look(with_data).facts
+    assert known.known("outcome.zero_share", "model:main").value > 0.1
+    assert known.known("claim.coefficient", "claim:main").value.text == "0.506"
+    assert "How is the outcome transformed" not in script.text
+
+
+def test_a_pasted_line_asks_only_for_the_rest(with_data):
+    line = "reg lnkg bay length_m years km_site i.area, vce(cluster harbour)"
+    script, _ = held(with_data, ["", line, "netting_kg", "log_plus", "1", "bay", *FIGURES, "q"])
+    spec = review.specification_of(casefolder.open_case(with_data))
+    assert "understood" in script.text
+    assert (spec.outcome.column, str(spec.errors.kind), spec.focus) == ("netting_kg", "cluster", ("bay",))
+
+
+def test_a_line_that_is_no_model_is_said_and_asked_again(with_data):
+    _, done = held(with_data, ["", "make me a sandwich", "q"])
+    assert done.left
+    assert len(casefolder.read_entries(casefolder.open_case(with_data))) == 1
+
+
+def test_a_data_file_that_is_not_there_is_one_line_and_asked_again(folder):
+    script, _ = held(folder, ["no such.csv", "q"])
+    assert casefolder.read_entries(casefolder.open_case(folder)) == ()
+    assert "no such.csv" in script.text
+
+
+def test_a_specification_edited_by_hand_is_kept(with_data):
+    held(with_data, [*FROM_LISTS, *FIGURES, "q"])
+    path = casefolder.open_case(with_data).specification()
+    mine = path.read_text().replace('"years", ', "")
+    path.write_text(mine)
+    assert review.needs_refit(review.look(with_data))
+    script, _ = held(with_data, ["q"])
+    assert path.read_text() == mine
+    assert "Which data file" not in script.text
+
+
+def test_results_come_back_without_estimating_again(with_data, monkeypatch):
+    held(with_data, [*FROM_LISTS, *FIGURES, "q"])
+    before = review.look(with_data)
+
+    def fail(*_):
+        raise AssertionError
+
+    monkeypatch.setattr(review, "_reestimated", fail)
+    after = review.look(with_data)
+    assert after.results == before.results
+    assert {each.name for each in after.results.exhibits} >= {"sample", "models", "comparison"}
+    assert list((with_data / "results").glob("*.png"))
+
+
+# --- pipes and terminals ------------------------------------------------------------------------------------------
+
+
+def environment(**more):
+    return {**os.environ, "PYTHONIOENCODING": "utf-8", **more}
+
+
+def test_an_interview_works_over_a_pipe(folder):
+    command = [sys.executable, "-m", "reviewkit", "interview", str(folder)]
+    done = subprocess.run(
+        command,
+        input="\nlog @ p. 3\nq\n",
+        capture_output=True,
+        encoding="utf-8",
+        env=environment(),
+        check=True,
+        timeout=60,
+    )
+    assert "\033" not in done.stdout
+    known = review.look(folder).facts.known("outcome.transform", "model:main")
+    assert (known.value, known.source.place) == ("log", "p. 3")
+
+
+def test_a_broken_off_input_keeps_everything(folder):
+    command = [sys.executable, "-m", "reviewkit", "interview", str(folder)]
+    done = subprocess.run(
+        command, input="\nlog\n", capture_output=True, encoding="utf-8", env=environment(), check=False
+    )
+    assert done.returncode == 0
+    assert len(casefolder.read_entries(casefolder.open_case(folder))) == 2
+
+
+class Terminal:
+    """A tmux session; text is typed, and what stands on the screen is read."""
+
+    def __init__(self, name):
+        self.socket = name
+        self("-f", "/dev/null", "new-session", "-d", "-x", "80", "-y", "200", "env PS1='$ ' sh")
+
+    def __call__(self, *arguments):
+        return subprocess.run(
+            ["tmux", "-L", self.socket, *arguments],
+            capture_output=True,
+            encoding="utf-8",
+            env=environment(LC_ALL="C.UTF-8"),
+            check=False,
+        )
+
+    def type(self, text):
+        self("send-keys", "-l", text)
+        self("send-keys", "Enter")
+
+    def waits_for(self, words, seconds=20.0):
+        end = time.monotonic() + seconds
+        while time.monotonic() < end:
+            shown = self("capture-pane", "-p", "-S", "-500").stdout
+            if words in shown:
+                return shown
+            time.sleep(0.1)
+        raise AssertionError(f"{words!r} did not come:\n{shown}")
+
+
+@pytest.fixture
+def terminal(tmp_path):
+    session = Terminal(f"reviewkit-test-{os.getpid()}")
+    yield session
+    session("kill-server")
+
+
+@pytest.mark.skipif(shutil.which("tmux") is None, reason="needs tmux")
+def test_a_real_interview_in_a_real_terminal(folder, terminal):
+    terminal.type(f"'{sys.executable}' -m reviewkit interview '{folder}'")
+    terminal.waits_for("Which data file")
+    terminal.type("")
+    terminal.waits_for("How is the outcome transformed")
+    terminal.type("?")
+    terminal.waits_for("Where to look")
+    terminal.type("log @ p. 2")
+    terminal.waits_for("= log")
+    terminal("send-keys", "C-c")
+    shown = terminal.waits_for("every answer is kept")
+    assert "Traceback" not in shown
+    assert [each.name for each in casefolder.read_entries(casefolder.open_case(folder))][1:] == ["outcome.transform"]
+    assert not (folder / casefolder.LOCK).exists()
+
+
+def test_a_killed_interview_resumes(folder):
+    command = [sys.executable, "-m", "reviewkit", "interview", str(folder)]
+    run = subprocess.Popen(command, stdin=subprocess.PIPE, stdout=subprocess.PIPE, encoding="utf-8", env=environment())
+    run.stdin.write("\nlog\n")
+    run.stdin.flush()
+    while "Which" not in (line := run.stdout.readline()) or "data file" in line:
+        assert line
+    run.kill()
+    run.communicate()
+    assert len(casefolder.read_entries(casefolder.open_case(folder))) == 2
+    _, done = held(folder, ["q"])
+    assert done.left
