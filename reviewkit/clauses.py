@@ -189,9 +189,8 @@ def missing(clause: Clause, lookup: Lookup) -> Iterator[str]:
             for part in parts:
                 yield from missing(part, lookup)
         case _:
-            unknown = {name: lookup(name) for name in names_of(clause) if plain(lookup(name)) is None}
-            blocking = tuple(name for name, value in unknown.items() if value is not None)
-            yield from blocking or unknown
+            unknown = [name for name in names_of(clause) if plain(lookup(name)) is None]
+            yield from [name for name in unknown if lookup(name) is not None] or unknown
 
 
 def first_missing(clause: Clause, lookup: Lookup) -> tuple[str, ...]:

@@ -1,7 +1,7 @@
 """Derives, decides every rule for every subject, finds disagreements, and picks the next question."""
 
 import math
-from collections.abc import Callable, Iterator, Sequence
+from collections.abc import Callable, Iterator, Mapping, Sequence
 from dataclasses import dataclass
 
 from reviewkit.clauses import Comparison, Literal, Lookup, Name
@@ -43,27 +43,51 @@ class Question:
 
 def decide(facts: Facts, book: RuleBook) -> tuple[Finding, ...]:
     """Every rule's finding for every subject of its kind, facts derived first, in the order of the book."""
-    return _decided(derive(facts), book)
+    facts = derive(facts)
+    return _decided(_sights(facts, book), book)
 
 
-def _decided(facts: Facts, book: RuleBook) -> tuple[Finding, ...]:
-    return tuple(
-        _finding(rule, subject, facts, book) for rule in book.rules for subject in facts.subjects(rule.subject)
-    )
+@dataclass(frozen=True, slots=True)
+class _Sight:
+    """What one subject sees; each name is looked up once for all rules."""
+
+    subject: str
+    lookup: Lookup
+    fact: Callable[[str], Fact | None]
 
 
-def _finding(rule: Rule, subject: str, facts: Facts, book: RuleBook) -> Finding:
-    lookup = remembering(book.lookup(facts, subject))
+def _sights(facts: Facts, book: RuleBook) -> dict[str, tuple[_Sight, ...]]:
+    """The sights of all subjects, by kind."""
+    kinds = dict.fromkeys(rule.subject for rule in book.rules)
+    return {kind: tuple(_sight(subject, facts, book) for subject in facts.subjects(kind)) for kind in kinds}
+
+
+def _sight(subject: str, facts: Facts, book: RuleBook) -> _Sight:
+    seen: dict[str, Fact | None] = {}
+
+    def fact(name: str) -> Fact | None:
+        if name not in seen:
+            seen[name] = facts.known(name, subject)
+        return seen[name]
+
+    return _Sight(subject, remembering(book.lookup(facts, subject)), fact)
+
+
+def _decided(sights: Mapping[str, Sequence[_Sight]], book: RuleBook) -> tuple[Finding, ...]:
+    return tuple(_finding(rule, sight, book) for rule in book.rules for sight in sights[rule.subject])
+
+
+def _finding(rule: Rule, sight: _Sight, book: RuleBook) -> Finding:
+    lookup = sight.lookup
     state = state_of(rule, lookup)
     names = dict.fromkeys(name for condition in rule.conditions for name in condition.names)
-    known = (facts.known(name, subject) for name in names)
     missing = missing_from(rule, lookup) if state is State.OPEN else ()
     return Finding(
         rule=rule,
-        subject=subject,
+        subject=sight.subject,
         state=state,
         importance=importance_of(rule, lookup),
-        facts=tuple(fact for fact in known if fact is not None),
+        facts=tuple(fact for name in names if (fact := sight.fact(name)) is not None),
         missing=missing,
         reason=_reason(rule, lookup, state, [book.vocabulary[name] for name in missing]),
     )
@@ -168,9 +192,10 @@ def agree(one: Value, other: Value) -> bool:
 
 @dataclass(frozen=True, slots=True)
 class _Wait:
-    """A finding that waits on a fact which can be asked for."""
+    """A rule, open for one subject, that waits on a fact which can be asked for."""
 
-    finding: Finding
+    rule: Rule
+    sight: _Sight
     definition: FactDefinition
     subject: str
     """The subject that the fact is about."""
@@ -185,28 +210,29 @@ def next_question(facts: Facts, book: RuleBook) -> Question | None:
     found, since looking up costs more than answering.
     """
     facts = derive(facts)
-    waits = [wait for finding in _decided(facts, book) for wait in _waits(finding, facts, book)]
+    sights = _sights(facts, book)
+    pairs = ((rule, sight) for rule in book.rules for sight in sights[rule.subject])
+    waits = [wait for rule, sight in pairs for wait in _waits(rule, sight, facts, book)]
     for topic in _topics(waits, book):
-        for group in _questions([wait for wait in waits if wait.finding.rule.topic == topic], book):
+        for group in _questions([wait for wait in waits if wait.rule.topic == topic], book):
             definition, subject = group[0].definition, group[0].subject
             same = [wait for wait in waits if (wait.definition, wait.subject) == (definition, subject)]
-            waiting = dict.fromkeys(w.finding.rule.name for w in same if _can_change(w, facts, book))
+            waiting = dict.fromkeys(wait.rule.name for wait in same if _can_change(wait))
             if waiting:
                 return Question(definition, subject, tuple(waiting))
     return None
 
 
-def _waits(finding: Finding, facts: Facts, book: RuleBook) -> Iterator[_Wait]:
-    """What an open finding should ask for first; a fact that is only worked out stands for what it needs."""
-    if finding.state is not State.OPEN:
+def _waits(rule: Rule, sight: _Sight, facts: Facts, book: RuleBook) -> Iterator[_Wait]:
+    """What an open rule should ask for first; a fact that is only worked out stands for what it needs."""
+    if state_of(rule, sight.lookup) is not State.OPEN:
         return
-    lookup = remembering(book.lookup(facts, finding.subject))
-    for name in _first_missing(finding.rule, lookup):
-        for asked in _askable(name, lookup, book):
+    for name in _first_missing(rule, sight.lookup):
+        for asked in _askable(name, sight.lookup, book):
             definition = book.vocabulary[asked]
-            subject = _subject_of(definition, finding.subject, facts)
+            subject = _subject_of(definition, sight.subject, facts)
             if subject:
-                yield _Wait(finding, definition, subject, name)
+                yield _Wait(rule, sight, definition, subject, name)
 
 
 def _first_missing(rule: Rule, lookup: Lookup) -> tuple[str, ...]:
@@ -233,7 +259,7 @@ def _subject_of(definition: FactDefinition, subject: str, facts: Facts) -> str |
 def _topics(waits: Sequence[_Wait], book: RuleBook) -> list[str]:
     """Topics by the number of findings that wait on an answer, most first."""
     counted = dict.fromkeys(dict.fromkeys(rule.topic for rule in book.rules), 0)
-    for topic, _, _ in {(wait.finding.rule.topic, wait.finding.rule.name, wait.finding.subject) for wait in waits}:
+    for topic, _, _ in {(wait.rule.topic, wait.rule.name, wait.sight.subject) for wait in waits}:
         counted[topic] += 1
     return sorted((topic for topic in counted if counted[topic]), key=lambda topic: -counted[topic])
 
@@ -252,16 +278,15 @@ def _questions(waits: Sequence[_Wait], book: RuleBook) -> list[list[_Wait]]:
     return sorted(groups.values(), key=key)
 
 
-def _can_change(wait: _Wait, facts: Facts, book: RuleBook) -> bool:
+def _can_change(wait: _Wait) -> bool:
     """Whether some answer changes the rule's state, or what it then waits on; true where that is hard to tell."""
-    if wait.name != wait.definition.name or _compared_with_another(wait.finding.rule, wait.name):
+    if wait.name != wait.definition.name or _compared_with_another(wait.rule, wait.name):
         return True
-    lookup = remembering(book.lookup(facts, wait.finding.subject))
-    others = set(wait.finding.missing) - {wait.name}
-    for value in _candidates(wait.definition, wait.finding.rule):
-        answered = _answered(lookup, wait.name, value)
-        state = state_of(wait.finding.rule, answered)
-        if state is not State.OPEN or set(missing_from(wait.finding.rule, answered)) != others:
+    others = set(missing_from(wait.rule, wait.sight.lookup)) - {wait.name}
+    for value in _candidates(wait.definition, wait.rule):
+        answered = _answered(wait.sight.lookup, wait.name, value)
+        state = state_of(wait.rule, answered)
+        if state is not State.OPEN or set(missing_from(wait.rule, answered)) != others:
             return True
     return False
 

@@ -1,0 +1,164 @@
+"""Facts that follow from others, against figures worked out by hand or by an independent way."""
+
+import math
+
+import pytest
+from hypothesis import given
+from hypothesis import strategies as st
+from rule_examples import SUBJECT, case
+
+from reviewkit.derived import DERIVATIONS, derive, needs
+from reviewkit.facts import NOT_STATED, Fact, Source, SourceKind, Standing
+from reviewkit.printed import read_printed
+
+P = read_printed
+
+
+def derived(name, **values):
+    facts = derive(case({key.replace("__", "."): value for key, value in values.items()}))
+    fact = facts.known(name, SUBJECT["claim"])
+    return None if fact is None else fact.value
+
+
+def test_percent_of_a_coefficient():
+    assert derived("claim.percent_of_coefficient", claim__coefficient=P("0.38")) == pytest.approx(38)
+    assert derived("claim.percent_exact", claim__coefficient=P("0.38")) == pytest.approx(46.2284589, abs=1e-6)
+    assert derived("claim.percent_exact", claim__coefficient=P("-0.38")) == pytest.approx(-31.6138591, abs=1e-6)
+    assert derived("claim.percent_exact", claim__coefficient=P("0")) == 0
+
+
+@pytest.mark.parametrize(
+    ("coefficient", "percent", "read_off", "exact"),
+    [
+        ("0.38", "38", "yes", "no"),
+        ("0.38", "46", "no", "yes"),
+        ("0.38", "46.2", "no", "yes"),  # 0.375 to 0.385 gives 45.5 to 47.0
+        ("0.380", "47", "no", "no"),  # 0.3795 to 0.3805 gives 46.15 to 46.30
+        ("0.05", "5", "yes", "yes"),
+        ("0.10", "10", "yes", "yes"),
+        ("0.100", "10.0", "yes", "no"),  # 10.4 to 10.6
+        ("-0.38", "38", "yes", "no"),  # a fall, printed without its sign
+        ("-0.38", "-38", "yes", "no"),
+        ("-0.38", "32", "no", "yes"),
+        ("0.38", "-38", "no", "no"),
+        ("0.4", "35", "yes", "no"),  # 0.35 to 0.45, edges touch
+        ("0.4", "34", "no", "no"),
+        ("12", "1200", "yes", "no"),
+    ],
+)
+def test_a_stated_percent_against_both_readings(coefficient, percent, read_off, exact):
+    given = {"claim__coefficient": P(coefficient), "claim__percent": P(percent)}
+    assert derived("claim.percent_is_coefficient", **given) == read_off
+    assert derived("claim.percent_is_exact", **given) == exact
+
+
+@given(st.floats(-3, 3), st.integers(1, 4), st.integers(0, 2))
+def test_a_percent_that_was_worked_out_rightly_is_always_recognised(b, digits, percent_digits):
+    printed = {
+        "claim__coefficient": P(f"{b:.{digits}f}"),
+        "claim__percent": P(f"{100 * math.expm1(b):.{percent_digits}f}"),
+    }
+    assert derived("claim.percent_is_exact", **printed) == "yes"
+    printed["claim__percent"] = P(f"{100 * b:.{percent_digits}f}")
+    assert derived("claim.percent_is_coefficient", **printed) == "yes"
+
+
+@pytest.mark.parametrize(
+    ("percent", "low", "high", "inside"),
+    [
+        ("46", 4.0, 41.0, "no"),
+        ("41", 4.0, 41.0, "yes"),
+        ("41", 4.0, 40.6, "yes"),  # 40.5 to 41.5 rounds to 41
+        ("41.0", 4.0, 40.6, "no"),
+        ("3", 4.0, 41.0, "no"),
+        ("4", 4.4, 41.0, "yes"),
+        ("20", -5.0, 41.0, "yes"),
+        ("-20", -5.0, 41.0, "no"),
+    ],
+)
+def test_a_claimed_percent_and_the_alternatives_interval(percent, low, high, inside):
+    given = {
+        "claim__percent": P(percent),
+        "refit__alternative_percent_low": low,
+        "refit__alternative_percent_high": high,
+    }
+    assert derived("claim.inside_alternative", **given) == inside
+
+
+def test_without_a_percent_the_printed_coefficients_reading_counts():
+    assert derived("claim.inside_alternative", refit__printed_reading_inside="no") == "no"
+    assert derived("claim.inside_alternative") is None
+    assert derived("claim.inside_alternative", refit__printed_reading_inside=NOT_STATED) is NOT_STATED
+
+
+def test_a_fall_printed_without_its_sign_is_held_against_a_negative_interval():
+    given = {
+        "refit__alternative_percent_low": -40.0,
+        "refit__alternative_percent_high": -10.0,
+        "claim__percent": P("32"),
+    }
+    assert derived("claim.inside_alternative", claim__coefficient=P("-0.38"), **given) == "yes"
+    assert derived("claim.inside_alternative", claim__coefficient=P("0.38"), **given) == "no"
+
+
+@pytest.mark.parametrize(
+    ("given", "zeros"),
+    [
+        ({"outcome__zero_share": 0.0}, "no"),
+        ({"outcome__zero_share": 1e-6}, "yes"),
+        ({"outcome__zero_share": 0.3, "outcome__zeros": "none present"}, "yes"),
+        ({"outcome__zeros": "none present"}, "no"),
+        ({"outcome__zeros": "dropped"}, "yes"),
+        ({"outcome__zeros": "constant added"}, None),  # many add a constant to what has no zeros
+        ({"outcome__zeros": "kept"}, None),
+        ({"outcome__zeros": NOT_STATED}, None),
+        ({"outcome__zeros": NOT_STATED, "outcome__zero_share": NOT_STATED}, NOT_STATED),
+        ({}, None),
+    ],
+)
+def test_whether_the_outcome_has_zeros(given, zeros):
+    assert derived("outcome.has_zeros", **given) == zeros
+
+
+def test_the_smaller_arm_counts_the_side_with_fewer_clusters():
+    assert derived("clusters.smaller_arm", refit__treated_clusters=30.0, refit__untreated_clusters=4.0) == 4
+    assert derived("clusters.smaller_arm", refit__treated_clusters=30.0) is None
+
+
+def test_agreement_on_the_data_lets_the_log_model_stand():
+    assert derived("spread.steady", refit__conclusion="agrees") == "yes"
+    assert derived("spread.steady", refit__conclusion="unsettled") is None
+
+
+def test_a_derived_fact_weighs_as_much_as_the_weakest_it_rests_on():
+    weak = Fact(
+        "claim.percent", P("38"), Standing.STATED, Source(SourceKind.MANUSCRIPT), "claim:example", confirmed=False
+    )
+    facts = derive(case({"claim.coefficient": P("0.38")}).adding((weak,)))
+    fact = facts.known("claim.percent_is_coefficient", "claim:example")
+    assert (fact.standing, fact.confirmed) == (Standing.STATED, False)
+    assert fact.source == Source(SourceKind.DERIVED, "claim.coefficient, claim.percent")
+
+
+def test_what_the_referee_settled_is_not_derived_anew():
+    facts = case({"outcome.has_zeros": "no"})
+    data = Fact("outcome.zero_share", 0.2, Standing.DONE, Source(SourceKind.EXHIBIT), "model:example")
+    assert derive(facts.adding((data,))).known("outcome.has_zeros", "model:example").value == "no"
+
+
+def test_data_outweigh_what_the_text_states():
+    stated = case({"outcome.has_zeros": "no"}, Standing.STATED)
+    data = Fact("outcome.zero_share", 0.2, Standing.DONE, Source(SourceKind.EXHIBIT), "model:example")
+    assert derive(stated.adding((data,))).known("outcome.has_zeros", "model:example").value == "yes"
+
+
+def test_deriving_twice_adds_nothing():
+    once = derive(case({"claim.coefficient": P("0.38"), "claim.percent": P("38"), "outcome.zero_share": 0.2}))
+    assert derive(once) == once
+
+
+def test_each_derivation_says_what_it_needs_and_where_it_comes_from():
+    for derivation in DERIVATIONS:
+        assert needs(derivation.name) == derivation.needs
+        assert derivation.work_out.__doc__
+    assert needs("outcome.transform") == ()
