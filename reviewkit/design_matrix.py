@@ -1,24 +1,14 @@
 """From a specification and a table to arrays: the design matrix, the outcome, weights, offsets and clusters."""
 
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 import numpy.typing as npt
 
-from reviewkit.expressions import (
-    Apply,
-    Binary,
-    Column,
-    Factor,
-    Literal,
-    Member,
-    Node,
-    Term,
-    Unary,
-    columns_of,
-)
+from reviewkit.column_values import Columns, condition_holds, numeric_values, present, slope_values
+from reviewkit.expressions import Column, Factor, Node, Term, columns_of
 from reviewkit.refusals import NotEstimable, Refusal
 from reviewkit.specification import Specification, WeightKind
 
@@ -27,8 +17,6 @@ if TYPE_CHECKING:
 
 Array = npt.NDArray[np.float64]
 Mask = npt.NDArray[np.bool_]
-Columns = Mapping[str, npt.NDArray[Any]]
-"""Columns by name, each (n,): floats with nan, or texts with None for what is missing."""
 
 CONSTANT = "(constant)"
 MOST_LEVELS = 1000
@@ -61,9 +49,9 @@ class DesignColumn:
         """The column's derivative by the numeric column `focal`, (rows,), by the product rule."""
         total = np.zeros(rows)
         for place, part in enumerate(self.parts):
-            if focal not in part_columns(part):
+            if isinstance(part, Level) or focal not in columns_of(part):
                 continue
-            product = _slope(part, focal, columns)
+            product = slope_values(part, focal, columns)
             for other in (*self.parts[:place], *self.parts[place + 1 :]):
                 product = product * part_values(other, columns)
             total += product
@@ -212,131 +200,10 @@ def part_values(part: Node | Level, columns: Columns) -> Array:
     return numeric_values(part, columns)
 
 
-def numeric_values(node: Node, columns: Columns) -> Array:
-    """The values of a numeric expression, (n,); nan where it is not defined."""
-    with np.errstate(all="ignore"):
-        match node:
-            case Column(name):
-                return np.asarray(columns[name], dtype=float)
-            case Literal(value) if isinstance(value, float):
-                return np.asarray(value)
-            case Apply(function, argument):
-                return _FUNCTIONS[function](numeric_values(argument, columns))
-            case Unary("-", operand):
-                return -numeric_values(operand, columns)
-            case Binary(sign, left, right) if sign in _ARITHMETIC:
-                return _ARITHMETIC[sign](numeric_values(left, columns), numeric_values(right, columns))
-    raise Refusal("model.terms", f"`{node}` is a condition where a number belongs", "columns, functions, + - * / ^")
-
-
-def condition_holds(node: Node, columns: Columns) -> Mask:
-    """Where a row condition holds, (n,); a missing value makes the whole comparison false."""
-    match node:
-        case Binary("and", left, right):
-            return condition_holds(left, columns) & condition_holds(right, columns)
-        case Binary("or", left, right):
-            return condition_holds(left, columns) | condition_holds(right, columns)
-        case Unary("not", operand):
-            return ~condition_holds(operand, columns) & _all_present(node, columns)
-        case Member(item, values):
-            return np.isin(_comparable(item, columns, values[0]), np.array(values, dtype=object)) & _all_present(
-                node, columns
-            )
-        case Binary(sign, left, right) if sign in _COMPARISONS:
-            other = right.value if isinstance(right, Literal) else left.value if isinstance(left, Literal) else 0.0
-            holds = _COMPARISONS[sign](_comparable(left, columns, other), _comparable(right, columns, other))
-            return np.asarray(holds, dtype=bool) & _all_present(node, columns)
-    raise Refusal("model.where", f"`{node}` is not a condition", "comparisons joined by and, or, not")
-
-
 def two_valued(values: npt.NDArray[Any]) -> tuple[float, float] | None:
     """The lower and the higher of exactly two values of a numeric column, else None."""
     found = np.unique(values) if values.dtype != object else np.empty(0)
     return (float(found[0]), float(found[1])) if found.size == 2 else None
-
-
-_FUNCTIONS: Mapping[str, Callable[[Array], Array]] = {
-    "log": np.log,
-    "sqrt": np.sqrt,
-    "exp": np.exp,
-    "asinh": np.arcsinh,
-    "abs": np.abs,
-}
-_FUNCTION_SLOPES: Mapping[str, Callable[[Array], Array]] = {
-    "log": lambda v: 1 / v,
-    "sqrt": lambda v: 0.5 / np.sqrt(v),
-    "exp": np.exp,
-    "asinh": lambda v: 1 / np.sqrt(1 + v * v),
-    "abs": np.sign,
-}
-_ARITHMETIC: Mapping[str, Callable[[Array, Array], Array]] = {
-    "+": np.add,
-    "-": np.subtract,
-    "*": np.multiply,
-    "/": np.divide,
-    "^": np.power,
-}
-_COMPARISONS: Mapping[str, Callable[[Any, Any], Any]] = {
-    "<": np.less,
-    "<=": np.less_equal,
-    ">": np.greater,
-    ">=": np.greater_equal,
-    "==": np.equal,
-    "!=": np.not_equal,
-}
-
-
-def _slope(part: Node | Level, focal: str, columns: Columns) -> Array:
-    """The derivative of a part by the column `focal`, (n,) or a scalar."""
-    with np.errstate(all="ignore"):
-        match part:
-            case Column(name):
-                return np.asarray(1.0 if name == focal else 0.0)
-            case Apply(function, argument):
-                outer = _FUNCTION_SLOPES[function](numeric_values(argument, columns))
-                return outer * _slope(argument, focal, columns)
-            case Unary("-", operand):
-                return -_slope(operand, focal, columns)
-            case Binary(sign, left, right) if sign in _ARITHMETIC:
-                return _binary_slope(sign, (left, right), focal, columns)
-    return np.asarray(0.0)
-
-
-def _binary_slope(sign: str, operands: tuple[Node, Node], focal: str, columns: Columns) -> Array:
-    left, right = (numeric_values(each, columns) for each in operands)
-    d_left, d_right = (_slope(each, focal, columns) for each in operands)
-    match sign:
-        case "+":
-            return d_left + d_right
-        case "-":
-            return d_left - d_right
-        case "*":
-            return d_left * right + left * d_right
-        case "/":
-            return (d_left * right - left * d_right) / (right * right)
-    return right * np.power(left, right - 1) * d_left
-
-
-def _comparable(node: Node, columns: Columns, other: object) -> npt.NDArray[Any]:
-    """The values of one side of a comparison: texts where the other side is a text."""
-    if isinstance(node, Literal):
-        return np.asarray(node.value, dtype=object if isinstance(node.value, str) else float)
-    text = isinstance(node, Column) and columns[node.name].dtype == object
-    if text != isinstance(other, str):
-        kind, wanted = ("text", "a text in quotes") if text else ("numbers", "a number")
-        raise Refusal("model.where", f"`{node}` holds {kind} and is compared with something else", wanted)
-    return columns[node.name] if isinstance(node, Column) else numeric_values(node, columns)
-
-
-def _all_present(node: Node, columns: Columns) -> Mask:
-    present = [_present(columns[name]) for name in columns_of(node)]
-    return np.logical_and.reduce(present) if present else np.asarray(True)
-
-
-def _present(values: npt.NDArray[Any]) -> Mask:
-    if values.dtype == object:
-        return np.array([value is not None for value in values], dtype=bool)
-    return np.isfinite(values)
 
 
 def _used_columns(spec: Specification, frame: "pandas.DataFrame") -> dict[str, npt.NDArray[Any]]:
@@ -362,9 +229,11 @@ def _column(frame: "pandas.DataFrame", name: str) -> npt.NDArray[Any]:
         raise Refusal(f"column `{name}`", "the data have no such column", near, "Check its spelling")
     values = frame[name]
     if is_numeric_dtype(values.dtype) or is_bool_dtype(values.dtype):
-        return values.to_numpy(dtype=float, na_value=np.nan)
+        return np.asarray(values.to_numpy(dtype=float, na_value=np.nan))
     texts = values.astype(object)
-    return np.where(values.isna().to_numpy(), None, texts.map(str).to_numpy(dtype=object))
+    column = texts.map(str).to_numpy(dtype=object)
+    column[values.isna().to_numpy()] = None
+    return np.asarray(column)
 
 
 def _nearest(name: str, columns: list[str]) -> str:
@@ -412,7 +281,7 @@ def _usable_rows(
 
 
 def _missing(values: npt.NDArray[Any]) -> Mask:
-    return ~_present(values) if values.dtype == object else np.isnan(values)
+    return ~present(values) if values.dtype == object else np.isnan(values)
 
 
 def _keep_weights(spec: Specification, columns: Columns, usable: Mask, keep: Callable[[Mask, str], None]) -> None:

@@ -114,7 +114,8 @@ class Facts:
 
     def sight(self, subject: str) -> Iterator[tuple[str, ...]]:
         """The subjects seen from `subject`, nearest first; the study comes last for all."""
-        level, seen = (subject,), {subject, STUDY}
+        level: tuple[str, ...] = (subject,)
+        seen = {subject, STUDY}
         while level:
             yield level
             level = tuple(up for down, up in self.links if down in level and up not in seen)

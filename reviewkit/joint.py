@@ -11,7 +11,6 @@ import numpy as np
 import numpy.typing as npt
 from scipy import stats
 
-from reviewkit.design_matrix import Design
 from reviewkit.estimators.fit import Codes, Fit, Sample, cluster_sums, influence
 from reviewkit.estimators.least_squares import fit_least_squares
 from reviewkit.estimators.poisson import fit_poisson
@@ -30,7 +29,7 @@ DRAWS = 999
 _BLOCK_CELLS = 4_000_000  # of a rows × clusters matrix held at once
 _SETTLED = 1e-10
 
-FITTERS: Mapping[str, Callable[[Sample], Fit]] = {"ols": fit_least_squares, "poisson": fit_poisson}
+FITTERS: Mapping[str, Callable[[Sample, Array | None], Fit]] = {"ols": fit_least_squares, "poisson": fit_poisson}
 
 
 @dataclass(frozen=True, slots=True)
@@ -53,7 +52,8 @@ class Side:
         coefficients = sample.basis.map @ on_basis
         if self.place is not None:
             return float(coefficients[self.place])
-        assert self.model is not None and self.of is not None  # noqa: S101
+        assert self.model is not None  # noqa: S101
+        assert self.of is not None  # noqa: S101
         residuals = sample.y - sample.offset - sample.basis.z @ on_basis if self.model.smeared else sample.y
         return effect(self.model, self.of, coefficients, residuals, weights)
 
@@ -61,7 +61,8 @@ class Side:
         """The compared number and each observation's influence on it, (n,)."""
         if self.place is not None:
             return coefficient_influence(self.fit, self.place, jackknifed)
-        assert self.model is not None and self.of is not None  # noqa: S101
+        assert self.model is not None  # noqa: S101
+        assert self.of is not None  # noqa: S101
         return effect_influence(self.model, self.of, self.fit, jackknifed)
 
 
@@ -186,7 +187,7 @@ def _resampled(side: Side, counts: Array) -> Side:
         offset=old.offset[kept],
         clusters=None,
     )
-    fit = FITTERS[side.fit.estimator](sample)
+    fit = FITTERS[side.fit.estimator](sample, side.fit.on_basis)
     model, of = side.model, side.of
     if model is not None and of is not None:
         model = replace(model, index_offset=model.index_offset[kept], factor=model.factor[kept])
@@ -196,7 +197,8 @@ def _resampled(side: Side, counts: Array) -> Side:
 
 def _without_each_cluster(submitted: Side, alternative: Side, progress: Progress | None) -> Joint:
     """Both numbers with each cluster left out in turn; V = (G-1)/G · sum of (without - whole)², t with G-1."""
-    assert submitted.codes is not None and alternative.codes is not None  # noqa: S101
+    assert submitted.codes is not None  # noqa: S101
+    assert alternative.codes is not None  # noqa: S101
     groups = int(max(submitted.codes.max(), alternative.codes.max())) + 1
     if groups < 2:
         raise NotEstimable("comparison", "there is one cluster only", "two or more clusters")

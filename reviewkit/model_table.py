@@ -44,6 +44,8 @@ class ModelTable:
 
     estimator: Estimator
     outcome: str
+    """The outcome as regressed."""
+    outcome_column: str
     observations: float
     dropped: tuple[tuple[str, int], ...]
     errors: Errors
@@ -81,6 +83,7 @@ def model_table(
     return ModelTable(
         estimator,
         outcome_text(spec.outcome, spec.exposure) if estimator is Estimator.OLS else spec.outcome.column,
+        spec.outcome.column,
         design.observations,
         design.dropped,
         errors,

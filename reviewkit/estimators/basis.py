@@ -79,21 +79,29 @@ def _map(centre: Array, mixing: Array) -> Array:
 
 def _factored(z: Array, centre: Array, scale: Array, flat: npt.NDArray[np.bool_]) -> Basis:
     """The basis by an orthogonal factorisation, with collinear columns named and left out."""
-    r = np.linalg.qr(z, mode="r")
+    r = _triangle(z)
     norm = np.linalg.norm(r, axis=0)
     kept: list[int] = []
     out: list[int] = []
     for place in range(z.shape[1]):
         left = r[:, place]
         if kept:
-            q = np.linalg.qr(r[:, kept])[0]
+            q = _orthogonal(r[:, kept])
             left = left - q @ (q.T @ left)
         small = flat[place] or np.linalg.norm(left) <= _COLLINEAR * max(norm[place], 1e-300)
         (out if small else kept).append(place)
-    collinear = tuple((place, _partners(r, kept, place)) for place in out)
-    mixing = np.linalg.inv(np.linalg.qr(r[:, kept], mode="r")) * np.sqrt(len(z))
+    collinear = tuple((place, (0,) if flat[place] else _partners(r, kept, place)) for place in out)
+    mixing = np.linalg.inv(_triangle(r[:, kept])) * np.sqrt(len(z))
     back = np.diag(1 / scale[kept]) @ mixing
     return Basis(np.ascontiguousarray(z[:, kept] @ mixing), _map(centre[kept], back), tuple(kept), collinear)
+
+
+def _triangle(x: Array) -> Array:
+    return np.asarray(np.linalg.qr(x, mode="r"), dtype=float)
+
+
+def _orthogonal(x: Array) -> Array:
+    return np.asarray(np.linalg.qr(x)[0], dtype=float)
 
 
 def _partners(r: Array, kept: list[int], place: int) -> tuple[int, ...]:

@@ -98,8 +98,8 @@ def influence_rows(fit: Fit) -> Array:
 def cluster_sums(rows: Array, codes: Codes, count: int) -> Array:
     """Sums by cluster of rows (n,) or (n, k): (G,) or (G, k)."""
     if rows.ndim == 1:
-        return np.bincount(codes, rows, minlength=count)
-    return np.stack([np.bincount(codes, column, minlength=count) for column in rows.T], axis=1)
+        return np.asarray(np.bincount(codes, rows, minlength=count), dtype=float)
+    return np.stack([cluster_sums(column, codes, count) for column in rows.T], axis=1)
 
 
 def weighted_gram(z: Array, weights: Array) -> Array:

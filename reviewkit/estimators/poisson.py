@@ -19,8 +19,8 @@ _MOST_HALVINGS = 30
 _SMALL_STEP = 1e-8  # in index units; the last step is still taken, so what is left is about its square
 
 
-def fit_poisson(sample: Sample) -> Fit:
-    """Fit an exponential mean by Poisson quasi-maximum likelihood.
+def fit_poisson(sample: Sample, start: Array | None = None) -> Fit:
+    """Fit an exponential mean by Poisson quasi-maximum likelihood, from coefficients on the basis if there are any.
 
     Raises:
         NotEstimable: The outcome is negative or all zero, or the steps do not come to rest.
@@ -28,11 +28,11 @@ def fit_poisson(sample: Sample) -> Fit:
     _check(sample.y)
     w = sample.weights * sample.multiplicity
     unit = float(w @ sample.y / (w @ np.exp(sample.offset)))
-    scaled = sample.y / unit
-    on_basis, mean, gram, steps = _newton(sample.basis.z, scaled, w, sample.offset)
+    shift = np.linalg.solve(sample.basis.map, np.eye(sample.basis.z.shape[1])[0] * np.log(unit))
+    begin = None if start is None else start - shift
+    on_basis, mean, gram, steps = _newton(sample.basis.z, sample.y / unit, (w, sample.offset), begin)
     coefficients = sample.basis.map @ on_basis
     coefficients[0] += np.log(unit)
-    shift = np.linalg.solve(sample.basis.map, np.eye(len(on_basis))[0] * np.log(unit))
     return Fit(
         estimator="poisson",
         sample=sample,
@@ -58,18 +58,21 @@ def _check(y: Array) -> None:
         raise NotEstimable("Poisson model", "the outcome is zero in every row", "some outcome above 0")
 
 
-def _newton(z: Array, y: Array, w: Array, offset: Array) -> tuple[Array, Array, Array, int]:
+def _newton(z: Array, y: Array, rest: tuple[Array, Array], start: Array | None) -> tuple[Array, Array, Array, int]:
     """Coefficients on z, mean, Hessian at the end, and the number of steps; y has mean one per unit of exposure."""
-    beta = _start(z, y, w, offset)
-    mean = _mean(z @ beta + offset)
-    height = _height(z @ beta + offset, mean, y, w)
+    w, offset = rest
+    beta = _start(z, y, w, offset) if start is None else start
+    index = z @ beta + offset
+    mean = _mean(index)
+    height = _height(index, mean, y, w)
     for step_number in range(1, _MOST_STEPS + 1):
         gram = weighted_gram(z, w * mean)
         step = _solve(gram, z.T @ (w * (y - mean)))
         move = z @ step
-        beta, index, mean, height = _halved(z, beta, step, (y, w, offset, height))
+        share, index, mean, height = _halved(index, move, (y, w, height))
+        beta = beta + share * step
         if np.abs(move).max() < _SMALL_STEP:
-            return beta, mean, weighted_gram(z, w * mean), step_number
+            return beta, mean, gram, step_number
     raise NotEstimable(
         "Poisson model",
         f"the estimate has not come to rest after {_MOST_STEPS} steps",
@@ -84,20 +87,19 @@ def _start(z: Array, y: Array, w: Array, offset: Array) -> Array:
     return _solve(weighted_gram(z, w * mean), z.T @ (w * mean * target))
 
 
-def _halved(
-    z: Array, beta: Array, step: Array, state: tuple[Array, Array, Array, float]
-) -> tuple[Array, Array, Array, float]:
+def _halved(index: Array, move: Array, state: tuple[Array, Array, float]) -> tuple[float, Array, Array, float]:
     """The step, halved until the quasi-likelihood does not fall by more than rounding."""
-    y, w, offset, height = state
+    y, w, height = state
     slack = 1e-12 * (abs(height) + float(w.sum()))
+    share = 1.0
     for _ in range(_MOST_HALVINGS):
-        index = z @ (beta + step) + offset
-        mean = _mean(index)
-        new = _height(index, mean, y, w)
+        moved = index + share * move
+        mean = _mean(moved)
+        new = _height(moved, mean, y, w)
         if np.isfinite(new) and new >= height - slack:
             break
-        step = step / 2
-    return beta + step, index, mean, new
+        share /= 2
+    return share, moved, mean, new
 
 
 def _mean(index: Array) -> Array:

@@ -88,24 +88,32 @@ def verdict_words(each: Comparison) -> str:
         return f"no conclusion is drawn: {each.why}"
     bound, least = each.agree_within_percent, each.differ_by_at_least_percent
     if each.conclusion is Verdict.AGREES and bound is not None:
-        return f"they agree within {percent(bound)}"
+        return f"they agree within {percent(bound)} of {_submitted(each)}"
     if each.excludes_zero and least is not None:
-        above = f"between {percent(least)} and {percent(bound)}" if bound is not None else f"at least {percent(least)}"
-        words = f"they differ, by an amount that the data put {above if bound is not None else 'at ' + above}"
-        words += " of the submitted number"
+        amount = (
+            f"between {percent(least)} and {percent(bound)}" if bound is not None else f"at {percent(least)} or more"
+        )
+        words = f"they differ, by an amount that the data put {amount} of {_submitted(each)}"
     elif bound is not None and bound <= WIDEST_BOUND:
-        words = f"we found no sign of a difference; the data bound it at {percent(bound)} of the submitted number"
+        words = f"we found no sign of a difference; the data bound it at {percent(bound)} of {_submitted(each)}"
     else:
         words = "we found no sign of a difference, but the data say little about it"
     return f"{words} ({each.why})" if each.why else words
 
 
-def _told(each: Comparison, value: float, ends: tuple[float, float] | None) -> str:
+def _submitted(each: Comparison) -> str:
+    """What the bounds are shares of: told in percent, a log ratio is still compared in logs."""
+    in_percent = each.scale is Scale.LOG_RATIO or each.coefficient_in_percent
+    return "the submitted number (compared in logs)" if in_percent else "the submitted number"
+
+
+def _told(each: Comparison, value: float, own: tuple[float, float] | None) -> str:
     """The number with its interval: in per cent for a log ratio of means."""
-    low, high = ends or (None, None)
+    low, high = own or (None, None)
     if (each.scale is Scale.LOG_RATIO or each.coefficient_in_percent) and max(
         map(abs, (value, low or 0.0, high or 0.0))
     ) < 20:
-        inner = interval(*(None if end is None else 100 * math.expm1(end) for end in (low, high)), "%")
+        ends = [None if end is None else 100 * math.expm1(end) for end in (low, high)]
+        inner = interval(ends[0], ends[1], "%")
         return f"{percent(100 * math.expm1(value))} ({inner})"
     return f"{estimate(value)} ({interval(low, high)})"

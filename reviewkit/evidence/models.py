@@ -49,7 +49,8 @@ def _sentence(submitted: ModelTable, alternative: ModelTable | None, agreement: 
 
 def agreement_sentence(agreement: tuple[Agreement, ...]) -> str:
     """How the refit meets the print, in one sentence; empty where nothing was printed."""
-    met, missed = [], []
+    met: list[str] = []
+    missed: list[str] = []
     for each in agreement:
         for what, holds in (("estimate", each.estimate), ("error", each.std_error)):
             if holds is not None:

@@ -21,7 +21,7 @@ def percent_exhibit(submitted: ModelTable, alternative: ModelTable | None, focus
             "Kennedy percent",
             "minimum variance percent",
             "why none",
-        ),  # fmt: skip
+        ),
         rows,
         f"A percent is 100 · (exp(b) - 1), its interval the transformed interval of b. {GEOMETRIC}"
         if read
@@ -46,5 +46,5 @@ def _rows(table: ModelTable, name: str) -> list[tuple[Cell, ...]]:
             found.kennedy_percent,
             found.minimum_variance_percent,
             found.percent_why_not,
-        )  # fmt: skip
+        )
     ]

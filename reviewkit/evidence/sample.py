@@ -3,6 +3,7 @@
 import numpy as np
 import numpy.typing as npt
 
+from reviewkit.design_matrix import Design
 from reviewkit.exhibit import BarFigure, Cell, Exhibit
 from reviewkit.model_table import ModelTable
 from reviewkit.wording import counted, joined, number, share
@@ -13,12 +14,16 @@ FEWEST_IN_CLASS = 10
 """Rows under which classes of the outcome are put together, so that no single row shows."""
 
 
-def sample_exhibit(table: ModelTable, label: str) -> Exhibit:
-    """Rows used and left out, zeros, distinct values and quartiles of the outcome; `label` names it with its unit."""
-    design = table.design
-    y = design.y
-    rows: list[tuple[Cell, ...]] = [("rows in the table", design.table_rows), ("rows used", design.rows)]
-    rows += [(f"left out: {why}", lost) for why, lost in table.dropped]
+def sample_exhibit(design: Design, tables: tuple[ModelTable, ModelTable | None], label: str) -> Exhibit:
+    """Rows used and left out, zeros, distinct values and quartiles of the outcome.
+
+    `design` holds every usable row, also those that one model leaves out; `label` names the outcome with its unit.
+    """
+    y, table = design.y, tables[0]
+    rows: list[tuple[Cell, ...]] = [("rows in the table", design.table_rows)]
+    rows += [(f"left out: {why}", lost) for why, lost in design.dropped]
+    rows.append(("rows that can be used", design.rows))
+    rows += [(f"used by the {name} model", used) for name, used in _used(tables) if used != design.rows]
     if design.multiplicity is not None:
         rows.append(("observations (frequency weights)", float(design.observations)))
     if table.clusters:
@@ -34,7 +39,7 @@ def sample_exhibit(table: ModelTable, label: str) -> Exhibit:
         f"Sample and outcome: {label}",
         ("measure", "value"),
         tuple(rows),
-        _sentence(table, zeros),
+        _sentence(design, tables, zeros),
         (_distribution(y, label),),
     )
 
@@ -50,12 +55,18 @@ def _quartiles(name: str, y: Array) -> list[tuple[Cell, ...]]:
     ]
 
 
-def _sentence(table: ModelTable, zeros: float) -> str:
-    design = table.design
-    left = joined([f"{counted(lost, 'row')} ({why})" for why, lost in table.dropped])
-    used = f"{counted(design.rows, 'row')} of {number(design.table_rows)} are used"
-    out = f"; left out: {left}" if left else ""
-    return f"{used}{out}; {share(zeros)} of the outcomes are zero."
+def _used(tables: tuple[ModelTable, ModelTable | None]) -> list[tuple[str, int]]:
+    return [
+        (name, table.design.rows) for name, table in zip(("submitted", "alternative"), tables, strict=True) if table
+    ]
+
+
+def _sentence(design: Design, tables: tuple[ModelTable, ModelTable | None], zeros: float) -> str:
+    left = joined([f"{counted(lost, 'row')} ({why})" for why, lost in design.dropped])
+    parts = [f"{number(design.rows)} of {counted(design.table_rows, 'row')} can be used"]
+    parts += [f"left out: {left}"] if left else []
+    parts += [f"the {name} model uses {number(used)}" for name, used in _used(tables) if used != design.rows]
+    return f"{'; '.join(parts)}; {share(zeros)} of the outcomes are zero."
 
 
 def _distribution(y: Array, label: str) -> BarFigure:

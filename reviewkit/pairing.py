@@ -1,0 +1,161 @@
+"""The submitted and the alternative model compared term by term, on the rows and the scale that fit."""
+
+from dataclasses import dataclass, replace
+
+import numpy as np
+import numpy.typing as npt
+
+from reviewkit.comparison import Cautions, Comparison, Kind, compare
+from reviewkit.design_matrix import Design
+from reviewkit.estimators.fit import Codes
+from reviewkit.fitting import FittedModel, fit_model
+from reviewkit.implied import Focus, Scale, contrast, exponential_mean, smeared_mean
+from reviewkit.joint import Progress, Side, effective_clusters, estimate_joint
+from reviewkit.model_table import percent_why_not
+from reviewkit.refusals import NotEstimable
+from reviewkit.specification import Estimator, PerExposure, Specification, Transform, Zeros
+from reviewkit.wording import counted
+
+Mask = npt.NDArray[np.bool_]
+
+SEED = 1
+"""Of the bootstrap, so that a note can be repeated to the digit."""
+FEWEST_CLUSTERS = 8
+"""Treated, untreated or effective clusters below which a comparison stays unsettled; common practice, no source."""
+
+
+@dataclass(frozen=True, slots=True)
+class Task:
+    """What all comparisons of one model share."""
+
+    spec: Specification
+    design: Design
+    """Every usable row."""
+    reproduced: bool
+    progress: Progress
+
+
+def comparisons(task: Task, own: Mask, usable: Mask, focus: tuple[Focus, ...]) -> tuple[Comparison, ...]:
+    """Each focal term on the rows that both models use, then on each model's own rows where these differ.
+
+    `own` marks the rows of the submission, `usable` those of the alternative, both among the rows of the design.
+    """
+    common = own & usable
+    sets = [("common", common, common)] + ([] if np.array_equal(own, usable) else [("own", own, usable)])
+    found: list[Comparison] = []
+    for label, mine, theirs in sets:
+        task.progress("comparing on the same rows" if label == "common" else "comparing on each model's own rows")
+        try:
+            pair = (
+                fit_model(task.spec, Estimator.OLS, task.design, mine),
+                fit_model(task.spec, Estimator.POISSON, task.design, theirs),
+            )
+        except NotEstimable as refusal:
+            found += [Comparison(each.term, Kind.MODEL, None, label, why=refusal.message()) for each in focus]
+            continue
+        for each in focus:
+            for kind in (Kind.MODEL, Kind.READING) if _is_read(task.spec, each) else (Kind.MODEL,):
+                found.append(_compared(task, pair, each, Comparison(each.term, kind, None, label)))
+    return tuple(found)
+
+
+def _is_read(spec: Specification, focus: Focus) -> bool:
+    """Whether the coefficient may be read as if the outcome were a plain log, which is then a comparison of its own."""
+    return spec.outcome.transform in (Transform.LOG_PLUS, Transform.ASINH) and focus.alone
+
+
+def _compared(task: Task, pair: tuple[FittedModel, FittedModel], focus: Focus, about: Comparison) -> Comparison:
+    spec = task.spec
+    in_levels = spec.outcome.transform is Transform.NONE
+    scale = Scale.COEFFICIENT if _same_quantity(spec) else focus.scale(in_levels)
+    try:
+        submitted = _submitted_side(task, pair[0], focus, None if about.kind is Kind.READING else scale)
+        alternative = _alternative_side(task, pair[1], focus, scale)
+        joint = estimate_joint(submitted, alternative, task.design.rows, SEED, task.progress)
+    except NotEstimable as refusal:
+        return replace(about, why=refusal.message())
+    except np.linalg.LinAlgError:
+        return replace(about, why="the covariance of the two numbers cannot be computed")
+    cautions = Cautions(task.reproduced, _few_clusters(pair[0], focus))
+    done = compare(joint, replace(about, scale=scale), cautions)
+    return replace(
+        done,
+        coefficient_in_percent=scale is Scale.COEFFICIENT and _in_percent(spec, pair[0], focus),
+        printed_inside=_printed_inside(spec, focus, done),
+    )
+
+
+def _same_quantity(spec: Specification) -> bool:
+    """Whether both coefficients are the same quantity: a log without constant against an exponential mean."""
+    exposed = spec.exposure is not None and spec.outcome.per_exposure is PerExposure.NO
+    plain = spec.outcome.transform is Transform.LOG and spec.outcome.zeros is not Zeros.REPLACED
+    return plain and not exposed
+
+
+def _in_percent(spec: Specification, made: FittedModel, focus: Focus) -> bool:
+    column = made.design.columns_of_x[made.design.names.index(focus.term)]
+    return percent_why_not(spec.outcome, Estimator.OLS, column, made.design) is None
+
+
+def _submitted_side(task: Task, made: FittedModel, focus: Focus, scale: Scale | None) -> Side:
+    """The submission's number: its coefficient, where that is compared or read (no scale), else what it implies."""
+    if scale is None or scale is Scale.COEFFICIENT:
+        return Side(made.fit, made.rows, _codes(task, made), _place(made, focus))
+    model = smeared_mean(task.spec.outcome, made.design)
+    return Side(made.fit, made.rows, _codes(task, made), None, model, contrast(made.design, focus, scale))
+
+
+def _alternative_side(task: Task, made: FittedModel, focus: Focus, scale: Scale) -> Side:
+    place = _place(made, focus)
+    if scale is Scale.COEFFICIENT:
+        return Side(made.fit, made.rows, _codes(task, made), place)
+    of = contrast(made.design, focus, scale)
+    return Side(made.fit, made.rows, _codes(task, made), None, exponential_mean(made.design), of)
+
+
+def _place(made: FittedModel, focus: Focus) -> int:
+    if focus.term not in made.design.names:
+        raise NotEstimable(f"term `{focus.term}`", "it does not vary in the rows that can be fitted")
+    return made.design.names.index(focus.term)
+
+
+def _codes(task: Task, made: FittedModel) -> Codes | None:
+    """The clusters of the model's rows, counted as among all usable rows."""
+    return None if task.design.clusters is None else task.design.clusters[made.rows]
+
+
+def _few_clusters(made: FittedModel, focus: Focus) -> str | None:
+    """Why the clusters are too few for a conclusion, or None."""
+    codes = made.design.clusters
+    if codes is None:
+        return None
+    for which, count in arm_clusters(made.design, focus):
+        if count < FEWEST_CLUSTERS:
+            return f"{counted(count, f'{which} cluster')} only"
+    place = made.design.names.index(focus.term)
+    effective = effective_clusters(made.fit, codes, made.design.cluster_count, place)
+    if effective < FEWEST_CLUSTERS:
+        return f"the clusters weigh as much as {effective:.1f} equal ones"
+    return None
+
+
+def arm_clusters(design: Design, focus: Focus) -> list[tuple[str, int]]:
+    """Clusters with a row at the higher value, and with a row at the base, for a two-valued focal column."""
+    if focus.values is None or focus.column is None or design.clusters is None:
+        return []
+    values = design.columns[focus.column]
+    base, high = focus.values
+    return [
+        (name, int(np.unique(design.clusters[values == value]).size))
+        for name, value in (("treated", high), ("untreated", base))
+    ]
+
+
+def _printed_inside(spec: Specification, focus: Focus, done: Comparison) -> bool | None:
+    printed = dict(spec.printed_terms).get(focus.term)
+    if printed is None or printed.estimate is None or done.alternative_interval is None:
+        return None
+    if done.scale is not Scale.COEFFICIENT and done.kind is not Kind.READING:
+        return None
+    low, high = done.alternative_interval
+    return printed.estimate.high >= low and printed.estimate.low <= high
