@@ -134,4 +134,4 @@ def present(values: npt.NDArray[Any]) -> Mask:
     """Where a column has a value, (n,)."""
     if values.dtype == object:
         return np.array([value is not None for value in values], dtype=bool)
-    return np.isfinite(values)
+    return np.asarray(np.isfinite(values))

@@ -6,7 +6,7 @@ they do say. The equivalence half is two one-sided tests: Schuirmann (1987), doi
 """
 
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from enum import StrEnum
 
 from reviewkit.implied import Scale
@@ -41,7 +41,6 @@ class Cautions:
     reproduced: bool = True
     few_clusters: str | None = None
     """Why the clusters are too few for more than *unsettled*."""
-    weak: str | None = None
 
 
 @dataclass(frozen=True, slots=True)
@@ -80,8 +79,6 @@ class Comparison:
 
 def compare(joint: Joint, about: Comparison, cautions: Cautions, share: float = MATERIAL_SHARE) -> Comparison:
     """Fill `about` (term, kind, scale, rows) with the numbers and the conclusion of a pair."""
-    from dataclasses import replace
-
     difference, error = joint.contrast(1.0)
     half = joint.critical(1.0, LEVEL) * error
     same = abs(difference) <= _SAME * max(abs(joint.submitted), abs(joint.alternative))
@@ -107,7 +104,7 @@ def compare(joint: Joint, about: Comparison, cautions: Cautions, share: float = 
         effective=joint.effective,
         error_ratio=float((joint.covariance[1, 1] / joint.covariance[0, 0]) ** 0.5) if joint.covariance[0, 0] else None,
         sign_turns=_off_zero(own) and _off_zero(other) and joint.submitted * joint.alternative < 0,
-        weak=cautions.weak or _weakness(joint),
+        weak=_weakness(joint),
         why=why,
     )
 

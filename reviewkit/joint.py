@@ -11,7 +11,7 @@ import numpy as np
 import numpy.typing as npt
 from scipy import stats
 
-from reviewkit.estimators.fit import Codes, Fit, Sample, cluster_sums, influence
+from reviewkit.estimators.fit import Codes, Fit, Sample, cluster_sums, pull
 from reviewkit.estimators.least_squares import fit_least_squares
 from reviewkit.estimators.poisson import fit_poisson
 from reviewkit.implied import Contrast, MeanModel, coefficient_influence, effect, effect_influence
@@ -284,8 +284,6 @@ def effective_clusters(fit: Fit, codes: Codes, groups: int, place: int) -> float
     """G / (1 + CV²) of the clusters' shares in the variation of one column after the others; at most G."""
     gradient = np.zeros(len(fit.coefficients))
     gradient[place] = 1.0
-    scored = influence(fit, gradient)
-    residual = fit.residuals * fit.sample.weights
-    partial = np.divide(scored, residual, out=np.zeros_like(scored), where=residual != 0)
-    share = cluster_sums(partial**2 * fit.sample.weights * fit.curvature, codes, groups)
+    weights = fit.sample.weights * fit.sample.multiplicity * fit.curvature
+    share = cluster_sums(pull(fit, gradient) ** 2 * weights, codes, groups)
     return float(groups / (1 + share.var() / share.mean() ** 2))

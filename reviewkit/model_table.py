@@ -1,7 +1,7 @@
 """A fitted model as its own table shows it: terms with errors by its convention, percents, and how prints agree."""
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from scipy import stats
@@ -116,8 +116,6 @@ def _term_row(place: int, spec: Specification, estimator: Estimator, made: tuple
 
 def _readings(b: float, se: float, df: float | None, classical_df: float | None) -> PercentReadings:
     """Percents with the interval of the model's own convention; minimum variance under classical errors only."""
-    from dataclasses import replace
-
     found = percent_readings(b, se, df)
     if classical_df is None:
         return replace(found, minimum_variance_percent=None)

@@ -85,9 +85,13 @@ def leverage(fit: Fit) -> Array:
 
 def influence(fit: Fit, gradient: Array, scale: Array | None = None) -> Array:
     """Influence of each observation on gradient'b, (n,); `scale` (n,) multiplies its score."""
-    direction = fit.bread @ (fit.sample.basis.map.T @ gradient)
-    rows = scores(fit) * (fit.sample.basis.z @ direction)
+    rows = scores(fit) * pull(fit, gradient)
     return rows if scale is None else rows * scale
+
+
+def pull(fit: Fit, gradient: Array) -> Array:
+    """What a unit of score in each row adds to gradient'b, (n,)."""
+    return np.asarray(fit.sample.basis.z @ (fit.bread @ (fit.sample.basis.map.T @ gradient)))
 
 
 def influence_rows(fit: Fit) -> Array:

@@ -5,6 +5,8 @@ the outcome and of the focal covariate after the others (Cook and Weisberg 1982;
 Rows are shown in bins only.
 """
 
+from dataclasses import replace
+
 import numpy as np
 import numpy.typing as npt
 
@@ -45,8 +47,6 @@ def baseline_exhibit(sample: Sample, design: Design, place: int, label: str) -> 
 
 def _added_variable(sample: Sample, design: Design, place: int) -> tuple[Array, Array]:
     """The focal column and the outcome, each less its fit on the other columns; (n,) both."""
-    from dataclasses import replace
-
     others = well_conditioned(np.delete(design.x, place, axis=1))
     rest = replace(sample, basis=others)
     focal = replace(rest, y=design.x[:, place], offset=np.zeros(design.rows))
