@@ -130,9 +130,12 @@ def missing_from(rule: Rule, lookup: Lookup) -> tuple[str, ...]:
     return tuple(dict.fromkeys(name for part in parts for name in part.missing(lookup)))
 
 
+_REFIT = "a re-estimation from the data"
+
+
 def _reason(rule: Rule, lookup: Lookup, state: State, missing: Sequence[FactDefinition]) -> str:
     if state is State.OPEN:
-        waits = joined(definition.label for definition in missing)
+        waits = joined(dict.fromkeys(_REFIT if each.name.startswith("refit.") else each.label for each in missing))
         return sentence(f"waits on: {waits}") if waits else "What is known does not decide it."
     if state is not State.CLEAR:
         return ""
@@ -213,7 +216,7 @@ def next_question(facts: Facts, book: RuleBook) -> Question | None:
     sights = _sights(facts, book)
     pairs = ((rule, sight) for rule in book.rules for sight in sights[rule.subject])
     waits = [wait for rule, sight in pairs for wait in _waits(rule, sight, facts, book)]
-    for topic in _topics(waits, book):
+    for topic in _topics(waits, book, facts):
         for group in _questions([wait for wait in waits if wait.rule.topic == topic], book):
             definition, subject = group[0].definition, group[0].subject
             same = [wait for wait in waits if (wait.definition, wait.subject) == (definition, subject)]
@@ -256,12 +259,30 @@ def _subject_of(definition: FactDefinition, subject: str, facts: Facts) -> str |
     return next((each for each in in_sight if each.partition(":")[0] == definition.about), None)
 
 
-def _topics(waits: Sequence[_Wait], book: RuleBook) -> list[str]:
-    """Topics by the number of findings that wait on an answer, most first."""
+def _topics(waits: Sequence[_Wait], book: RuleBook, facts: Facts) -> list[str]:
+    """Topics by the number of rules that wait on an answer, most first; a topic once begun is finished first."""
+    begun = _begun(book, facts)
     counted = dict.fromkeys(dict.fromkeys(rule.topic for rule in book.rules), 0)
     for topic, _, _ in {(wait.rule.topic, wait.rule.name, wait.sight.subject) for wait in waits}:
         counted[topic] += 1
-    return sorted((topic for topic in counted if counted[topic]), key=lambda topic: -counted[topic])
+    return sorted(
+        (topic for topic in counted if counted[topic]), key=lambda topic: (topic not in begun, -counted[topic])
+    )
+
+
+def _begun(book: RuleBook, facts: Facts) -> set[str]:
+    """The topics that the latest answer belongs to."""
+    answers = [
+        fact.name for fact in facts if fact.source.kind is SourceKind.ANSWER and fact.standing is Standing.SETTLED
+    ]
+    latest = answers[-1] if answers else ""
+    return {
+        rule.topic
+        for rule in book.rules
+        for condition in rule.conditions
+        for name in condition.names
+        if latest == name or latest in needs(name)
+    }
 
 
 def _questions(waits: Sequence[_Wait], book: RuleBook) -> list[list[_Wait]]:
