@@ -125,7 +125,9 @@ def _quiet(case: CaseContent, phrases: Phrases, most: int) -> tuple[Block, ...]:
     found = _in_state(case, State.CLEAR)
     reasons = tuple(dict.fromkeys(clean(phrases.spoken(finding.reason)) for finding in found if finding.reason))[:most]
     titles = dict.fromkeys(
-        clean(finding.rule.title) for finding in found if clean(phrases.spoken(finding.reason)) not in reasons
+        clean(phrases.spoken(finding.rule.title))
+        for finding in found
+        if clean(phrases.spoken(finding.reason)) not in reasons
     )
     listed = "; ".join(title[:1].lower() + title[1:] for title in titles)
     more = phrases.say("quiet.more", titles=listed) if listed and most else ""
