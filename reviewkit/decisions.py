@@ -123,9 +123,9 @@ def importance_of(rule: Rule, lookup: Lookup) -> Importance:
 
 
 def missing_from(rule: Rule, lookup: Lookup) -> tuple[str, ...]:
-    """All facts that can still change the state of an open rule."""
-    parts = [rule.applies, rule.when, *([rule.stands_when] if rule.stands_when else [])]
-    if rule.when.decide(lookup) is False or (rule.stands_when and rule.stands_when.decide(lookup)):
+    """The facts that can still change the state of an open rule; first of all those that tell whether it applies."""
+    parts = [rule.when, *([rule.stands_when] if rule.stands_when else [])]
+    if rule.applies.decide(lookup) is None:
         parts = [rule.applies]
     return tuple(dict.fromkeys(name for part in parts for name in part.missing(lookup)))
 
