@@ -24,7 +24,6 @@ from reviewkit.clauses import (
     names_of,
     parts_of,
 )
-from reviewkit.placeholders import render as render
 from reviewkit.refusals import Refusal
 from reviewkit.vocabulary import Kind, Vocabulary, closest
 

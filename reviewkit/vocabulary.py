@@ -1,5 +1,6 @@
 """What facts there are: names, kinds, the question that asks for one, and where its answer is found."""
 
+import math
 from collections.abc import Iterable, Iterator
 from dataclasses import dataclass, field, replace
 from enum import StrEnum
@@ -35,6 +36,8 @@ class Place(StrEnum):
 
 
 PLACES = tuple(Place)
+NONE = "none"
+"""What is typed where several may be named and there is none."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -89,7 +92,8 @@ class FactDefinition:
             case Kind.PRINTED:
                 return read_printed(plain, where)
             case Kind.SOME | Kind.NAMES:
-                return self.checked(tuple(part.strip() for part in plain.split(",") if part.strip()), where)
+                parts = () if plain == NONE else tuple(part.strip() for part in plain.split(",") if part.strip())
+                return self.checked(parts, where)
             case Kind.ONE | Kind.ANSWER | Kind.TEXT:
                 return self.checked(plain, where)
 
@@ -119,7 +123,7 @@ class FactDefinition:
 
     def _in_range(self, number: float) -> bool:
         above = self.low is None or number >= self.low
-        return number == number and above and (self.high is None or number <= self.high)
+        return math.isfinite(number) and above and (self.high is None or number <= self.high)
 
 
 @dataclass(frozen=True, slots=True)
