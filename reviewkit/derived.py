@@ -81,6 +81,12 @@ def spread_is_steady(lookup: Lookup) -> Value | None:
     return "yes" if lookup("refit.conclusion") == "agrees" else None
 
 
+def scale_in_words(lookup: Lookup) -> Value | None:
+    """The scale of a comparison as a reader writes it: `log ratio of means`."""
+    scale = lookup("refit.scale")
+    return scale.replace("_", " ") if isinstance(scale, str) else None
+
+
 _PERCENT = ("claim.coefficient", "claim.percent")
 _INSIDE = (
     "claim.percent",
@@ -97,6 +103,7 @@ DERIVATIONS = (
     Derivation("claim.inside_alternative", "claim", _INSIDE, inside_alternative),
     Derivation("outcome.has_zeros", "model", ("outcome.zero_share", "outcome.zeros"), has_zeros),
     Derivation("spread.steady", "model", ("refit.conclusion",), spread_is_steady),
+    Derivation("refit.scale_in_words", "model", ("refit.scale",), scale_in_words),
     Derivation("clusters.smaller_arm", "model", ("refit.treated_clusters", "refit.untreated_clusters"), smaller_arm),
 )
 """In an order in which none needs a later one."""

@@ -130,6 +130,10 @@ def test_agreement_on_the_data_lets_the_log_model_stand():
     assert derived("spread.steady", refit__conclusion="unsettled") is None
 
 
+def test_scales_are_said_in_words():
+    assert derived("refit.scale_in_words", refit__scale="log_ratio_of_means") == "log ratio of means"
+
+
 def test_a_derived_fact_weighs_as_much_as_the_weakest_it_rests_on():
     weak = Fact(
         "claim.percent", P("38"), Standing.STATED, Source(SourceKind.MANUSCRIPT), "claim:example", confirmed=False

@@ -96,6 +96,14 @@ def neighbours(pair: Comparison) -> Iterator[Comparison]:
     yield replace(pair, sign=NEIGHBOUR[pair.sign])
     yield from (replace(pair, left=each) for each in stepped(pair.left))
     yield from (replace(pair, right=each) for each in stepped(pair.right))
+    yield from (replace(pair, right=each) for each in shortened(pair.right))
+
+
+def shortened(expression: Expression) -> Iterator[Expression]:
+    """A list without one of its members."""
+    if isinstance(expression, Literal) and isinstance(expression.value, tuple) and len(expression.value) > 1:
+        for left_out in expression.value:
+            yield replace(expression, value=tuple(each for each in expression.value if each != left_out))
 
 
 def stepped(expression: Expression) -> Iterator[Expression]:
