@@ -98,8 +98,9 @@ def interview(
             count = unattended.take_answers(folder, answers)
             _aside(f"{count} answers taken from {answers.name}.")
         else:
-            folder, asked = review.open_interview(case, minutes is not None, tuple(again or ()))
             screen = _screen(plain, as_json)
+            interview_screen.refresh(folder, screen)
+            folder, asked = review.open_interview(case, minutes is not None, tuple(again or ()))
             interview_screen.closing(interview_screen.hold(folder, asked, screen), screen)
     _after(review.look(case), as_json)
 

@@ -133,7 +133,8 @@ def _specification_prompt(interview: Interview) -> Prompt | None:
 
 
 def _again_prompt(interview: Interview) -> Prompt | None:
-    done = {each.name for each in standing_entries(interview.entries[interview.start :])}
+    held = standing_entries(interview.entries[interview.start :])
+    done = {each.name for each in held if each.act is not Act.REMARK}
     for name in interview.again:
         definition = interview.book.vocabulary.get(name)
         if definition is not None and definition.asked and name not in done:

@@ -4,21 +4,25 @@ from dataclasses import dataclass, replace
 from pathlib import Path
 
 from reviewkit import casefolder, review
-from reviewkit.answers import SPECIFYING, Act, Entry
+from reviewkit.answers import SPECIFYING, Act, Entry, standing_entries
 from reviewkit.casefolder import CaseFolder, Input
-from reviewkit.facts import Value
+from reviewkit.decisions import agree, decide
+from reviewkit.facts import NOT_STATED, Standing, Value
 from reviewkit.interview import (
     Interview,
     entries_for,
+    facts_of,
     next_prompt,
     open_points,
     shown_value,
     specifying,
     undoing,
+    where_from,
 )
 from reviewkit.prompts import Answered, Choice, Command, Commanded, Form, Matches, Prompt, Reply, Unclear, read_reply
 from reviewkit.records import Json
 from reviewkit.refusals import Refusal
+from reviewkit.rules import Importance, State
 from reviewkit.screen import (
     COMMANDS,
     LIST_AT_ONCE,
@@ -30,6 +34,10 @@ from reviewkit.screen import (
     show_prompt,
 )
 from reviewkit.specifying import next_step, problem_with
+from reviewkit.wording import counted
+
+TRIAGE_AFTER = 5
+"""Answers after which it is said once how things stand."""
 
 
 class Left(Exception):
@@ -49,6 +57,12 @@ class Session:
         for entry in entries:
             casefolder.record(self.case, entry)
         return replace(self, interview=replace(self.interview, entries=(*self.interview.entries, *entries)))
+
+    @property
+    def answered(self) -> int:
+        """How many of the rules' questions were answered since it began."""
+        new = standing_entries(self.interview.entries[self.interview.start :])
+        return sum(each.act is Act.ANSWER and not each.name.startswith(SPECIFYING) for each in new)
 
 
 @dataclass(frozen=True, slots=True)
@@ -163,7 +177,30 @@ def _answered(session: Session, prompt: Prompt, reply: Answered) -> Session | No
         session.screen.faint(f"= {shown or shown_value(prompt.definition, reply.value)}", "  ")
     if prompt.name.startswith(SPECIFYING):
         return _specified(session, prompt, reply.value)
-    return session.recording(*entries_for(prompt, reply.value, reply.place, session.interview))
+    _say_what_differs(session, prompt, reply.value)
+    after = session.recording(*entries_for(prompt, reply.value, reply.place, session.interview))
+    if after.answered == TRIAGE_AFTER:
+        _say_how_it_stands(after)
+    return after
+
+
+def _say_what_differs(session: Session, prompt: Prompt, value: Value) -> None:
+    """Where paper, script or data say something else: said at once, and kept beside the answer."""
+    for fact in facts_of(session.interview).every(prompt.name, prompt.subject):
+        said = fact.value
+        if fact.standing is not Standing.SETTLED and NOT_STATED not in (said, value) and not agree(said, value):
+            shown = shown_value(prompt.definition, said)
+            session.screen.say(f"But {where_from(fact)}: {shown}. Your answer counts; both are kept.", "  ")
+
+
+def _say_how_it_stands(session: Session) -> None:
+    findings = decide(facts_of(session.interview), session.interview.book)
+    raised = sum(each.state is State.RAISED for each in findings)
+    waiting = [each for each in findings if each.state is State.OPEN]
+    major = sum(each.importance is Importance.MAJOR for each in waiting)
+    session.screen.write("")
+    points = counted(raised, "point")
+    session.screen.say(f"So far {points} raised; {len(waiting)} open, {major} of them major if raised.")
 
 
 def _commanded(session: Session, prompt: Prompt, command: Command, text: str) -> Session | None:
@@ -257,12 +294,25 @@ def _finished(session: Session) -> Session:
     written = review.specify(session.case, session.interview)
     kept = "was edited by hand and is kept as it is"
     screen.say(f"{name} {'holds the specification; you may edit it' if written else kept}.", "  ")
-    try:
-        estimated = review.refit(session.case, progress=now_and_then(lambda text: screen.faint(text, "  ")))
-        for warning in estimated.warnings:
-            screen.say(str(warning), "  ")
-        screen.say("Re-estimated: what the data show need not be asked.", "  ")
-    except Refusal as refusal:
-        screen.say(f"Not re-estimated. {refusal.message()} `b` goes back to change an answer.", "  ")
+    _reestimate(session.case, screen)
     given = review.given_facts(session.case, review.read_results(session.case))
     return replace(session, interview=replace(session.interview, given=given))
+
+
+def _reestimate(case: CaseFolder, screen: Screen) -> None:
+    """Re-estimate between two questions; what cannot be estimated is said, and the questions go on."""
+    try:
+        estimated = review.refit(case, progress=now_and_then(lambda text: screen.faint(text, "  ")))
+    except Refusal as refusal:
+        screen.say(f"Not re-estimated. {refusal.message()}", "  ")
+        return
+    for warning in estimated.warnings:
+        screen.say(warning, "  ")
+    screen.say("Re-estimated: what the data show need not be asked.", "  ")
+
+
+def refresh(case: CaseFolder, screen: Screen) -> None:
+    """Re-estimate first where the specification is newer than the results, so that nothing known is asked."""
+    if review.is_stale(case):
+        screen.say("Specification or data are newer than the results.")
+        _reestimate(case, screen)

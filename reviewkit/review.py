@@ -18,6 +18,7 @@ from reviewkit.rulefiles import read_rule_book
 from reviewkit.rules import Finding, RuleBook, State
 from reviewkit.specification import Specification, read_specification, specification_from, specification_text
 from reviewkit.specifying import DataColumn, next_step, specification_values
+from reviewkit.wording import counted
 
 if TYPE_CHECKING:
     from reviewkit.readers.tables import Table
@@ -85,21 +86,32 @@ def settle_policy(case: CaseFolder, policy: Policy, answer: str) -> CaseFolder:
 
 
 def read_inputs(case: CaseFolder) -> tuple[CaseFolder, tuple[str, ...]]:
-    """Read manuscript and data as far as policy allows; what was found, in sentences."""
+    """Read manuscript and data as far as policy allows; what was found, in sentences.
+
+    Raises:
+        Refusal: One of them cannot be read; the other was read all the same.
+    """
     said: list[str] = []
     with casefolder.working_in(case):
-        manuscript = case.place(Input.MANUSCRIPT)
-        if manuscript is not None and case.settings.policy.get(Policy.SOFTWARE) == "no":
-            said.append("The journal allows no software on the manuscript, so it was not read.")
-        elif manuscript is not None:
-            case, proposed = _read_manuscript(case, manuscript)
-            said.append(_counted_readings(proposed))
-        if (data := case.place(Input.DATA)) is not None:
-            columns = describe_data(case, data)
-            said.append(f"{data.name}: {len(columns)} columns read.")
-        if case.given(Input.PACKAGE) is not None:
-            said.append("The package was noted; this version does not read packages yet.")
+        try:
+            case, found = _manuscript_read(case)
+            said += found
+        finally:
+            if (data := case.place(Input.DATA)) is not None:
+                said.append(f"{data.name}: {counted(len(describe_data(case, data)), 'column')} read.")
+    if case.given(Input.PACKAGE) is not None:
+        said.append("The package was noted; this version does not read packages yet.")
     return case, tuple(said)
+
+
+def _manuscript_read(case: CaseFolder) -> tuple[CaseFolder, list[str]]:
+    manuscript = case.place(Input.MANUSCRIPT)
+    if manuscript is None:
+        return case, []
+    if case.settings.policy.get(Policy.SOFTWARE) == "no":
+        return case, ["The journal allows no software on the manuscript, so it was not read."]
+    case, count = _read_manuscript(case, manuscript)
+    return case, [f"{manuscript.name}: {counted(count, 'statement')} on the model found, for you to confirm."]
 
 
 def _read_manuscript(case: CaseFolder, path: Path) -> tuple[CaseFolder, int]:
@@ -111,11 +123,6 @@ def _read_manuscript(case: CaseFolder, path: Path) -> tuple[CaseFolder, int]:
     if not case.settings.title and manuscript.title:
         case = casefolder.save_settings(case, replace(case.settings, title=manuscript.title[:200]))
     return case, len(found)
-
-
-def _counted_readings(count: int) -> str:
-    statements = "1 statement" if count == 1 else f"{count} statements"
-    return f"The manuscript was read: {statements} on the model found, to be confirmed by you."
 
 
 def describe_data(case: CaseFolder, path: Path) -> tuple[DataColumn, ...]:
@@ -336,10 +343,16 @@ def _say(progress: Progress | None, text: str) -> None:
 
 def needs_refit(review: Review) -> bool:
     """Whether the case has data and a specification whose results are missing or older than these."""
-    spec = specification_of(review.case)
-    if spec is None or not review.case.beside(spec.data).is_file():
+    return is_stale(review.case)
+
+
+def is_stale(case: CaseFolder, model: str = "main") -> bool:
+    """Whether there are data and a specification, and no results or older ones."""
+    spec = specification_of(case, model)
+    if spec is None or not case.beside(spec.data).is_file():
         return False
-    return review.results is None or review.results.is_old
+    kept = casefolder.read_results(case, model)
+    return kept is None or _is_old(case, model, kept)
 
 
 def editor_remarks(review: Review) -> tuple[str, ...]:

@@ -86,13 +86,14 @@ def checked(folder: Path) -> tuple[str, tuple[str, ...]]:
 
 
 def _failing(rule: Rule, book: RuleBook) -> list[str]:
-    from reviewkit.decisions import state_of
+    from reviewkit.decisions import ending
 
     failing = []
-    setting = {f"setting.{name}": each.value for name, each in book.settings.items()}
     for number, example in enumerate(rule.examples, start=1):
-        known = {**setting, **dict(example.facts)}
-        state = state_of(rule, known.get)
+        state, importance = ending(rule, example, book)
         if state is not example.state:
             failing.append(f"{rule.name}, example {number}: ends {state.value}, stated is {example.state.value}")
+        elif example.importance not in (None, importance):
+            stated = example.importance.value if example.importance else ""
+            failing.append(f"{rule.name}, example {number}: is {importance.value}, stated is {stated}")
     return failing
