@@ -14,6 +14,7 @@ if TYPE_CHECKING:
     from docx.styles.style import ParagraphStyle
 
 _KEPT_PROPERTIES = ("title", "language")
+_LEFT_OUT = ("/thumbnail", "/extended-properties", "/customXml", "/stylesWithEffects")
 _TRACES = ("w:rsids", "w:attachedTemplate", "w:proofState", "w:docVars")
 
 
@@ -164,9 +165,14 @@ def _clear_properties(document: "Document", note: Note) -> None:
     for each in list(root):
         if each.tag.rpartition("}")[2] not in _KEPT_PROPERTIES:
             root.remove(each)
-    relations = document.part.package.rels
-    for key in [key for key, one in relations.items() if one.reltype.endswith(("/thumbnail", "/extended-properties"))]:
-        del relations[key]
+    for relations in (document.part.package.rels, document.part.rels):
+        for key in [key for key, one in relations.items() if one.reltype.endswith(_LEFT_OUT)]:
+            del relations[key]
+    for each in document.styles.element.findall(f".//{qn('w:rsid')}"):
+        each.getparent().remove(each)
+    for section in document.sections:
+        for key in [key for key in section._sectPr.attrib if "rsid" in key]:
+            del section._sectPr.attrib[key]
     settings = document.settings.element
     for name in _TRACES:
         for each in settings.findall(qn(name)):

@@ -36,7 +36,7 @@ def _section(section: Section) -> Iterator[str]:
 
 def _heading(title: str, level: int) -> str:
     lines = _wrap(title)
-    return "\n".join([*lines, _RULES[level] * max(map(_wide, lines))] if level in _RULES else lines)
+    return "\n".join([*lines, _RULES[level] * max(map(_wide, lines), default=0)] if level in _RULES else lines)
 
 
 def _block(block: Block) -> str:
