@@ -138,6 +138,24 @@ def test_rule_files_carry_no_code_names_and_their_stem_is_a_slug():
         assert "code" not in tomllib.loads(path.read_text(encoding="utf-8"))
 
 
+def test_a_difference_is_told_in_the_words_that_its_bounds_allow():
+    rule = BOOK.rule("difference-not-settled")
+    bounds = {"refit.agree_within_percent": 12.0, "refit.scale_in_words": "log ratio of means"}
+    both = {**bounds, "refit.differ_by_at_least_percent": 1.0}
+    assert render(rule.says, both.get) == (
+        "Your model and a model of the mean differ, by an amount that the data put between 1.0 % and 12 % of your "
+        "model's figure, both taken as log ratio of means."
+    )
+    assert "no sign of a difference" in render(
+        rule.says, {**bounds, "refit.differ_by_at_least_percent": NOT_STATED}.get
+    )
+    assert render(rule.clear, bounds.get).endswith("the data bound it at 12 %.")
+    assert (
+        render(rule.says, {}.get)
+        == "The data say little about a difference between your model and a model of the mean."
+    )
+
+
 def shown(rule, key, value_of, instead=None):
     """The text with a value for each fact it names."""
     names = [name for name in placeholders(getattr(rule, key)) if not name.startswith("setting.")]
