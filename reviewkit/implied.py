@@ -95,7 +95,7 @@ def resolve_focus(spec: Specification, design: Design) -> tuple[Focus, ...]:
 def _resolved(term: Term, text: str, spec: Specification, design: Design) -> list[Focus]:
     part = term.parts[0]
     if len(term.parts) == 1 and isinstance(part, Factor):
-        places = [place for place, name in enumerate(design.names) if name.startswith(f"{text}[")]
+        places = [place for place, name in enumerate(design.names) if name.startswith(f"{Factor(part.column)}[")]
         found = [_class_focus(design, place, spec) for place in places]
     else:
         place = design.names.index(text) if text in design.names else None
