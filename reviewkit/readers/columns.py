@@ -8,7 +8,8 @@ from typing import TYPE_CHECKING
 from reviewkit.readers.traces import TracedTransform, trace_transform
 
 if TYPE_CHECKING:
-    import pandas
+    import numpy
+    import numpy.typing
 
     from reviewkit.readers.tables import Table
 
@@ -87,23 +88,23 @@ def _described_number(table: "Table", column: str, label: str) -> ColumnDescript
     values = table.frame[column].to_numpy(dtype="float64", na_value=numpy.nan)
     known = values[~numpy.isnan(values)]
     distinct = len(numpy.unique(known))
-    ends = (float(known.min()), float(known.max())) if distinct else (None, None)
+    smallest, largest = (float(known.min()), float(known.max())) if distinct else (None, None)
     kind = ColumnKind.DATE if column in table.dates else _number_kind(known, distinct)
     zeros, negatives = int((known == 0).sum()), int((known < 0).sum())
     hints = _hints(table, column, label, kind)
+    missing = len(values) - len(known)
     return ColumnDescription(
-        column, label, kind, len(values), len(values) - len(known), zeros, negatives, distinct, *ends, hints
+        column, label, kind, len(values), missing, zeros, negatives, distinct, smallest, largest, hints
     )
 
 
-def _number_kind(known: "pandas.api.extensions.ExtensionArray | object", distinct: int) -> ColumnKind:
+def _number_kind(known: "numpy.typing.NDArray[numpy.float64]", distinct: int) -> ColumnKind:
     import numpy
 
     few = {0: ColumnKind.EMPTY, 1: ColumnKind.CONSTANT, 2: ColumnKind.TWO_VALUED}
     if distinct in few:
         return few[distinct]
-    numbers = numpy.asarray(known, dtype="float64")
-    finite = numbers[numpy.isfinite(numbers)]
+    finite = known[numpy.isfinite(known)]
     return ColumnKind.WHOLE_NUMBER if (finite == numpy.round(finite)).all() else ColumnKind.NUMBER
 
 

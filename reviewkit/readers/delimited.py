@@ -39,7 +39,7 @@ def parse_delimited(data: bytes, name: str) -> tuple["pandas.DataFrame", tuple[s
     frame = _parsed(text, separator, name)
     if frame.empty:
         raise Refusal(name, "the file has a header and no rows", "at least one row below the header")
-    frame.columns = list(columns)  # type: ignore[assignment]
+    frame.columns = list(columns)
     frame, decided = _with_numbers(frame)
     said = (f"The file is not UTF-8; it was read as {encoding}.",) if encoding != "utf-8" else ()
     return frame, (*said, *renamed, *decided)
@@ -65,7 +65,9 @@ def _decoded(data: bytes, name: str) -> tuple[str, str]:
         break
     controls = sum(text.count(chr(code)) for code in (*range(1, 9), *range(14, 32)))
     if controls > len(text) / 1000:
-        raise Refusal(name, "the file is not plain text", "a table in plain text", "Save the table as .csv in UTF-8 and try again")
+        raise Refusal(
+            name, "the file is not plain text", "a table in plain text", "Save the table as .csv in UTF-8 and try again"
+        )
     return text, "utf-8" if encoding == "utf-8-sig" else encoding
 
 
@@ -96,10 +98,14 @@ def _sampled(text: str, separator: str) -> list[list[str]]:
 def _header(text: str, separator: str, name: str) -> list[str]:
     sampled = _sampled(text, separator)
     if not sampled:
-        raise Refusal(name, "the header line cannot be read", "names separated by comma, semicolon, tab or bar, quotes closed")
+        raise Refusal(
+            name, "the header line cannot be read", "names separated by comma, semicolon, tab or bar, quotes closed"
+        )
     header = [cell.strip() for cell in sampled[0]]
     if len(header) > MOST_COLUMNS:
-        raise Refusal(name, f"the file has more than {MOST_COLUMNS:,} columns", remedy="Keep only the columns the models use")
+        raise Refusal(
+            name, f"the file has more than {MOST_COLUMNS:,} columns", remedy="Keep only the columns the models use"
+        )
     if all(not cell or _POINT.match(cell) or _COMMA.match(cell) for cell in header):
         raise Refusal(name, "the first line holds numbers, not names", "a header line with a name for each column")
     if any(ord(letter) < 32 and letter not in "\t\r\n" for cell in header for letter in cell):
@@ -140,7 +146,9 @@ def _parsed(text: str, separator: str, name: str) -> "pandas.DataFrame":
         what = _parser_trouble(str(error))
     except Exception:  # hostile text: whatever else the parser raises, the file is no table
         what = "the rows cannot be read as a table"
-    raise Refusal(name, what, "a name in the header for each field, quotes closed", "Mend the line or save the table anew")
+    raise Refusal(
+        name, what, "a name in the header for each field, quotes closed", "Mend the line or save the table anew"
+    )
 
 
 def _parser_trouble(message: str) -> str:
@@ -164,20 +172,24 @@ def _with_numbers(frame: "pandas.DataFrame") -> tuple["pandas.DataFrame", tuple[
     for column, found in readable.items():
         meaning = _meaning(found, comma_decimal, comma_groups)
         if meaning is None:
-            remarks.append(f"Column {column!r} could be thousands or decimals (such as {_shown(found)}); it stays text.")
+            remarks.append(
+                f"Column {column!r} could be thousands or decimals (such as {_shown(found)}); it stays text."
+            )
         else:
             replaced[column] = texts[column].map({cell: _number(cell, meaning) for cell in found}).astype("float64")
-    for column, values in frame.items():
-        truths = cells.get(str(column), frozenset())
+    for column in map(str, frame.columns):
+        values, truths = frame[column], cells.get(column, frozenset())
         if values.dtype == bool or (truths and truths <= set(_TRUTHS)):
-            keys = {**_TRUTHS, True: 1.0, False: 0.0}
-            replaced[str(column)] = values.map(keys).astype("float64")
+            keys: dict[str | bool, float] = {True: 1.0, False: 0.0} | _TRUTHS
+            replaced[column] = values.map(keys).astype("float64")
             remarks.append(f"Column {column!r} holds true and false; they are read as 1 and 0.")
     if comma_decimal:
         remarks.append("Decimal commas were read as decimal marks.")
         pointed = [str(column) for column, values in frame.items() if values.dtype.kind == "f" and (values % 1).any()]
         if pointed:
-            remarks.append(f"Points were read as decimal marks in {', '.join(pointed[:5])}; thousands would need mending.")
+            remarks.append(
+                f"Points were read as decimal marks in {', '.join(pointed[:5])}; thousands would need mending."
+            )
     return frame.assign(**replaced) if replaced else frame, tuple(remarks)
 
 

@@ -24,6 +24,10 @@ class DtaParts:
     remarks: tuple[str, ...]
 
 
+_OPENING, _CLOSING = b"<stata_dta><header><release>", b"</stata_dta>"
+"""Tags that the published format begins and ends with, from version 117 on."""
+
+
 def parse_dta(data: bytes, name: str) -> DtaParts:
     """Read the bytes of a .dta file; coded columns keep their numbers, all 27 missing codes are missing."""
     _check_version(data, name)
@@ -31,6 +35,8 @@ def parse_dta(data: bytes, name: str) -> DtaParts:
         with warnings.catch_warnings(record=True) as said:
             warnings.simplefilter("always")
             parts = _parse(data)
+        if data.startswith(_OPENING) and _CLOSING not in data[-200:]:
+            raise ValueError("the end is missing")
     except Exception:  # the parser meets hostile bytes: whatever it raises means that the file is damaged
         raise Refusal(
             name,
@@ -41,7 +47,9 @@ def parse_dta(data: bytes, name: str) -> DtaParts:
     if parts.frame.empty:
         raise Refusal(name, "the file holds no rows", "at least one row")
     odd = any(issubclass(each.category, UnicodeWarning) for each in said)
-    remarks = ("Some texts are not in the encoding the file promises; they were read as Western European.",) if odd else ()
+    remarks = (
+        ("Some texts are not in the encoding the file promises; they were read as Western European.",) if odd else ()
+    )
     return DtaParts(parts.frame, parts.labels, parts.value_labels, parts.dates, remarks)
 
 
@@ -49,14 +57,15 @@ def _check_version(data: bytes, name: str) -> None:
     found = _version(data)
     if found is None or not _OLDEST <= found <= _NEWEST:
         what = "this is not a .dta file" if found is None else f"the .dta file is of version {found}"
-        raise Refusal(name, what, f".dta files of version {_OLDEST} to {_NEWEST}", "Save the table as .csv and try again")
+        raise Refusal(
+            name, what, f".dta files of version {_OLDEST} to {_NEWEST}", "Save the table as .csv and try again"
+        )
 
 
 def _version(data: bytes) -> int | None:
     """The format version the first bytes give; None where they give none."""
-    opening = b"<stata_dta><header><release>"  # the tag the published format begins with
-    if data.startswith(opening):
-        digits = data[len(opening) : len(opening) + 3]
+    if data.startswith(_OPENING):
+        digits = data[len(_OPENING) : len(_OPENING) + 3]
         return int(digits) if digits.isdigit() else None
     looks_old = len(data) > 60 and 100 <= data[0] <= 116 and data[1] in (1, 2) and data[2] == 1
     return data[0] if looks_old else None
@@ -68,7 +77,7 @@ def _parse(data: bytes) -> DtaParts:
     with pandas.io.stata.StataReader(
         io.BytesIO(data), convert_dates=False, convert_categoricals=False, preserve_dtypes=False
     ) as reader:
-        frame = reader.read()
+        frame = reader.read()  # type: ignore[attr-defined]  # public, but unknown to the stubs
         labels = {column: text.strip() for column, text in reader.variable_labels().items() if text.strip()}
         tables = reader.value_labels()
         names, attached, formats = (_listed(reader, each) for each in ("_varlist", "_lbllist", "_fmtlist"))

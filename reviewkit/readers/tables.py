@@ -77,7 +77,9 @@ def read_table(path: Path | str) -> Table:
 
 def _bytes_of(path: Path) -> bytes:
     if path.suffix.lower() not in (".csv", ".tsv", ".dta"):
-        raise Refusal(path.name, "this kind of file is not read as data", ALLOWED, "Save the table as .csv and try again")
+        raise Refusal(
+            path.name, "this kind of file is not read as data", ALLOWED, "Save the table as .csv and try again"
+        )
     try:
         if not path.exists():
             raise Refusal(path.name, "there is no such file", remedy=f"Looked in {path.parent}")

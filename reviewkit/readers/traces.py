@@ -51,7 +51,7 @@ class TracedTransform:
 
 
 def trace_transform(table: "Table", column: str) -> TracedTransform | None:
-    """The column of which `column` is log(x), log(x + c), asinh(x) or sqrt(x), exact to rounding; None where there is none."""
+    """The column of which `column` is log(x), log(x + c), asinh(x) or sqrt(x), exact to rounding; None without one."""
     import numpy
 
     target = _numbers(table, column)
@@ -160,7 +160,9 @@ def _log_forms(y: "Vector", x: "Vector") -> Iterator[Form]:
     if not numpy.isfinite(design).all():
         return
     norms = numpy.linalg.norm(design, axis=0)
-    scale, shift = (float(each) for each in numpy.linalg.lstsq(design / norms, numpy.ones(len(y)), rcond=None)[0] / norms)
+    scale, shift = (
+        float(each) for each in numpy.linalg.lstsq(design / norms, numpy.ones(len(y)), rcond=None)[0] / norms
+    )
     if scale > 0:
         for factor in _simpler(scale):
             yield from (("log_plus", constant, factor) for constant in _simpler(shift / scale) if constant)

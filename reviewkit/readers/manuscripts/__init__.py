@@ -19,12 +19,16 @@ def read_manuscript(path: Path | str) -> Manuscript:
     """
     path = Path(path)
     if path.suffix.lower() != ".docx":
-        raise Refusal(path.name, "this kind of file is not read as a manuscript", ".docx", "Save the manuscript as .docx")
+        raise Refusal(
+            path.name, "this kind of file is not read as a manuscript", ".docx", "Save the manuscript as .docx"
+        )
     try:
         if not path.is_file():
             raise Refusal(path.name, "there is no such file", remedy=f"Looked in {path.parent}")
         if path.stat().st_size > LARGEST_FILE:
-            raise Refusal(path.name, "the file is larger than 512 MiB", remedy="Save the manuscript with smaller pictures")
+            raise Refusal(
+                path.name, "the file is larger than 512 MiB", remedy="Save the manuscript with smaller pictures"
+            )
         data = path.read_bytes()
     except (OSError, ValueError) as error:
         reason = getattr(error, "strerror", None) or "its name or place cannot be used"

@@ -16,7 +16,9 @@ _M = "{http://schemas.openxmlformats.org/officeDocument/2006/math}"
 _FALLBACK = "{http://schemas.openxmlformats.org/markup-compatibility/2006}Fallback"
 _GONE = (f"{_W}del", f"{_W}moveFrom", _FALLBACK, f"{_W}instrText", f"{_W}txbxContent", f"{_W}sdtPr")
 _CAPTION = re.compile(r"^\s*(?:Table|Tab\.)\s+(?:[A-Z]?\.?\d{1,3}[a-z]?|[IVX]{1,5})\s*(?:[.:–—-]|$|\s)", re.IGNORECASE)
-_NOTES = re.compile(r"^\s*(?:Notes?|Sources?)\b|(?:standard errors|t[- ]statistics|p[- ]values)\b.*\b(?:parenthes|bracket)", re.I)
+_NOTES = re.compile(
+    r"^\s*(?:Notes?|Sources?)\b|(?:standard errors|t[- ]statistics|p[- ]values)\b.*\b(?:parenthes|bracket)", re.I
+)
 
 
 def read_docx(data: bytes, name: str) -> Manuscript:
@@ -36,10 +38,15 @@ def read_docx(data: bytes, name: str) -> Manuscript:
         reading.read(body)
     except Exception:  # hostile bytes: whatever the library raises means that the file is no sound .docx
         raise Refusal(
-            name, "the .docx file is damaged or of another kind", "a plain .docx file", "Save it anew as .docx and try again"
+            name,
+            "the .docx file is damaged or of another kind",
+            "a plain .docx file",
+            "Save it anew as .docx and try again",
         ) from None
     if not reading.paragraphs and not reading.tables:
-        raise Refusal(name, "the document holds no text", "a manuscript with text", "A scan must be turned into text first")
+        raise Refusal(
+            name, "the document holds no text", "a manuscript with text", "A scan must be turned into text first"
+        )
     return Manuscript(tuple(reading.paragraphs), tuple(_with_captions(reading)), reading.title)
 
 
@@ -172,7 +179,9 @@ def _with_captions(reading: _Reading) -> Iterator[ManuscriptTable]:
     taken: set[int] = set()
     paragraphs = reading.paragraphs
     for number, (rows, before) in enumerate(reading.tables, start=1):
-        near = [place for place in (before - 1, before - 2, before) if 0 <= place < len(paragraphs) and place not in taken]
+        near = [
+            place for place in (before - 1, before - 2, before) if 0 <= place < len(paragraphs) and place not in taken
+        ]
         caption = next((place for place in near if _CAPTION.match(paragraphs[place].text)), None)
         if caption is not None:
             taken.add(caption)

@@ -17,7 +17,9 @@ _ESTIMATORS = {
     "zero-inflated": r"\bzero[- ]inflated\b",
     "logit or probit": r"\b(?:logit|probit|logistic) (?:regressions?|models?)\b",
 }
-_ESTIMATES = re.compile(r"\b(?:estimat|regress|fit|fitted|model|run|ran|us(?:e|es|ed|ing)|obtain|comput|by|table)\w*\b", re.I)
+_ESTIMATES = re.compile(
+    r"\b(?:estimat|regress|fit|fitted|model|run|ran|us(?:e|es|ed|ing)|obtain|comput|by|table)\w*\b", re.I
+)
 
 
 def estimator_in(text: str) -> str | None:
@@ -37,16 +39,25 @@ def estimator_in(text: str) -> str | None:
 
 _ERRORS = r"(?:standard errors?|errors|inference|s\.e\.|SEs|confidence intervals|covariances?)"
 _WORD = r"[A-Za-z][\w'’-]*"
-_STOP = r"(?!(?:in|are|is|and|to|because|since|which|where|with|the|for|as|throughout|level|levels|at|by|on|of|or|that|from|were|was)\b)"
+_STOP = (
+    r"(?!(?:in|are|is|and|to|because|since|which|where|with|the|for|as|throughout|level|levels|at|by|on|of|or"
+    r"|that|from|were|was)\b)"
+)
 _GROUP = rf"{_STOP}{_WORD}(?:[ ]{_STOP}{_WORD}){{0,2}}"
 _CLUSTERED = re.compile(
-    rf"\bcluster(?:ed|ing|s)?\b(?:\s+{_ERRORS})?\s+(?:at|by|on|within)\s+(?:the\s+)?(?:level of (?:the\s+)?)?({_GROUP})(?:\s+and\s+(?:by\s+|the\s+)?({_GROUP}))?(?:[\s-]+levels?)?"
-    rf"|\b({_WORD})[- ]clustered\s+{_ERRORS}", re.I)  # fmt: skip
+    rf"\bcluster(?:ed|ing|s)?\b(?:\s+{_ERRORS})?\s+(?:at|by|on"
+    rf"|within)\s+(?:the\s+)?(?:level of (?:the\s+)?)?({_GROUP})(?:\s+and\s+(?:by\s+"
+    rf"|the\s+)?({_GROUP}))?(?:[\s-]+levels?)?"
+    rf"|\b({_WORD})[- ]clustered\s+{_ERRORS}",
+    re.I,
+)
 _KINDS = {
     "bootstrap": rf"\bbootstrap\w*\s+{_ERRORS}|\b{_ERRORS}\b[^.;]{{0,40}}\bbootstrap\w*",
-    "robust": rf"\b(?:heteroske\w+|hetersc\w+|heterosc\w+|white|huber)?[- ]?(?:robust|consistent)\s+{_ERRORS}|\b{_ERRORS}\b[^.;]{{0,30}}\b(?:robust|heterosk\w+[- ]consistent|HC[0-3])\b|\brobust (?:to|against) heterosk\w+",
+    "robust": rf"\b(?:heteroske\w+|hetersc\w+|heterosc\w+|white|huber)?[- ]?(?:robust|consistent)\s+{_ERRORS}"
+    rf"|\b{_ERRORS}\b[^.;]{{0,30}}\b(?:robust|heterosk\w+[- ]consistent|HC[0-3])\b|\brobust (?:to"
+    rf"|against) heterosk\w+",
     "classical": rf"\b(?:classical|conventional|homosk\w+|ordinary|usual)\s+(?:OLS\s+)?{_ERRORS}",
-}  # fmt: skip
+}
 
 
 def errors_in(text: str) -> tuple[str, tuple[str, ...]] | None:
@@ -59,7 +70,12 @@ def errors_in(text: str) -> tuple[str, tuple[str, ...]] | None:
             return None
         levels = tuple(" ".join(each.lower().split()) for each in clustered.groups() if each)
         return "clustered", tuple(re.sub(r"[\s-]+levels?$", "", level) for level in levels)
-    found = [name for name, shape in _KINDS.items() for each in re.finditer(shape, text, re.I) if not denied(text, each.start(), each.end())]
+    found = [
+        name
+        for name, shape in _KINDS.items()
+        for each in re.finditer(shape, text, re.I)
+        if not denied(text, each.start(), each.end())
+    ]
     names = list(dict.fromkeys(found))
     return (names[0], ()) if len(names) == 1 and not re.search(r"\bcluster", text, re.I) else None
 
@@ -83,22 +99,34 @@ def plural(noun: str) -> str:
 
 
 _CHECKS = {
-    "residual-versus-fitted": r"\bresiduals? (?:against|versus|vs\.?|on|by) (?:the )?(?:fitted|predicted)\b|\bresidual[- ]versus[- ]fitted\b",
+    "residual-versus-fitted": r"\bresiduals? (?:against|versus|vs\.?|on|by) (?:the )?(?:fitted|predicted)\b"
+    r"|\bresidual[- ]versus[- ]fitted\b",
     "added-variable": r"\b(?:added[- ]variable|partial[- ]regression) plots?\b",
-    "functional-form test": r"\bRESET\b|\blink tests?\b|\bfunctional[- ]form tests?\b|\btests? (?:of|for) (?:the )?functional form\b",
-}  # fmt: skip
+    "functional-form test": r"\bRESET\b|\blink tests?\b|\bfunctional[- ]form tests?\b|\btests? (?:of"
+    r"|for) (?:the )?functional form\b",
+}
 
 
 def checks_in(text: str) -> tuple[str, ...]:
     """Diagnostics that a sentence says are shown."""
     if re.search(r"\bwould\b|\bcould\b|\bmight\b|\bfuture\b|\bet al\b", text):
         return ()
-    found = [(name, re.search(shape, text, re.I if name != "functional-form test" else 0)) for name, shape in _CHECKS.items()]
+    found = [
+        (name, re.search(shape, text, re.I if name != "functional-form test" else 0)) for name, shape in _CHECKS.items()
+    ]
     return tuple(name for name, place in found if place and not denied(text, place.start(), place.end()))
 
 
-_TOOL = re.compile(r"\b(?:in|with|using|by)\s+(?:the (?:software|program|package)\s+)?(?!(?:Table|Tables|Figure|Fig|Column|Columns|Model|Models|Section|Panel|Equation|Appendix|Wave|Round|Chapter|Step|January|February|March|April|May|June|July|August|September|October|November|December|Spring|Summer|Autumn|Winter|Phase|Stage|Part)\b)([A-Z][\w+-]*)(?:\s+(?:software|package))?,?\s*\(?(?:version|v\.?|release)?\s*(\d+(?:\.\d+)*)?\b")  # fmt: skip
-_ANALYSED = re.compile(r"\b(?:analys|analyz|estimat|comput|calculat|fitted|statistical software|software|package|script)\w*\b", re.I)
+_TOOL = re.compile(
+    r"\b(?:in|with|using|by)\s+(?:the (?:software|program|package)\s+)?(?!(?:Table|Tables|Figure|Fig|Column"
+    r"|Columns|Model|Models|Section|Panel|Equation|Appendix|Wave|Round|Chapter|Step|January|February|March"
+    r"|April|May|June|July|August|September|October|November|December|Spring|Summer|Autumn|Winter|Phase|Stage"
+    r"|Part)\b)([A-Z][\w+-]*)(?:\s+(?:software|package))?,?\s*\(?(?:version|v\.?"
+    r"|release)?\s*(\d+(?:\.\d+)*)?\b"
+)
+_ANALYSED = re.compile(
+    r"\b(?:analys|analyz|estimat|comput|calculat|fitted|statistical software|software|package|script)\w*\b", re.I
+)
 _KNOWN = ("R", "Python", "Julia")
 
 
@@ -108,20 +136,34 @@ def software_in(text: str) -> str | None:
         return None
     for found in _TOOL.finditer(text):
         by_name = found[1] in _KNOWN or re.search(r"\b(?:software|program|package|version)\b", found[0], re.I)
-        if found[2] and (by_name or "." in found[2] or re.search(r"\bsoftware\b", text, re.I)) and not re.fullmatch(r"(?:19|20)\d\d", found[2]):
+        if (
+            found[2]
+            and (by_name or "." in found[2] or re.search(r"\bsoftware\b", text, re.I))
+            and not re.fullmatch(r"(?:19|20)\d\d", found[2])
+        ):
             return "yes"
         if found[1] in _KNOWN:
             return "partly"
     return None
 
 
-_AVAILABLE = re.compile(r"\b(?:is|are|will be|were|have been|made)\s+(?:made |freely |publicly |openly |all )*(?:available|deposited|archived|posted)\b|\bcan be (?:downloaded|obtained|found)\b", re.I)  # fmt: skip
+_AVAILABLE = re.compile(
+    r"\b(?:is|are|will be|were|have been|made)\s+(?:made |freely |publicly |openly |all )*(?:available"
+    r"|deposited|archived|posted)\b|\bcan be (?:downloaded|obtained|found)\b",
+    re.I,
+)
 _THINGS = {
     "data.available": r"\b(?:data|data ?sets?|microdata)\b",
     "code.available": r"\b(?:codes?|scripts?|do-files?|replication (?:files?|package|materials?))\b",
 }
-_REFUSED = re.compile(r"\b(?:cannot|can not|may not|must not)\s+be\s+(?:shared|made|published|released|disclosed)\b|\b(?:is|are)\s+not\s+(?:publicly |openly |freely )?available\b", re.I)  # fmt: skip
-_ON_REQUEST = re.compile(r"\b(?:up)?on (?:reasonable |written )?request\b|\bfrom the (?:corresponding )?authors?\b", re.I)
+_REFUSED = re.compile(
+    r"\b(?:cannot|can not|may not|must not)\s+be\s+(?:shared|made|published|released|disclosed)\b|\b(?:is"
+    r"|are)\s+not\s+(?:publicly |openly |freely )?available\b",
+    re.I,
+)
+_ON_REQUEST = re.compile(
+    r"\b(?:up)?on (?:reasonable |written )?request\b|\bfrom the (?:corresponding )?authors?\b", re.I
+)
 
 
 def available_in(text: str) -> tuple[tuple[str, str], ...]:
@@ -129,13 +171,22 @@ def available_in(text: str) -> tuple[tuple[str, str], ...]:
     things = [name for name, shape in _THINGS.items() if re.search(shape, text, re.I)]
     refused, offered = _REFUSED.search(text), _AVAILABLE.search(text)
     about_others = re.search(r"\b(?:data|codes?|scripts?) (?:on|for|from|about)\b", text, re.I)
-    if not things or (refused and offered and _ON_REQUEST.search(text) is None) or (about_others and not re.search(r"\bstudy|paper|article|analys", text, re.I)):
+    if (
+        not things
+        or (refused and offered and _ON_REQUEST.search(text) is None)
+        or (about_others and not re.search(r"\bstudy|paper|article|analys", text, re.I))
+    ):
         return ()
     if refused:
         return tuple((name, "no") for name in things)
     if offered is None or re.search(r"\bif\b|\bwere available\b", text):
         return ()
-    places = re.search(r"\brepositor\w+|\barchive\b|https?:|\bwww\.|\bdoi\b|\bonline\b|\bsupplement\w*|\bwebsite\b|\bpublic\w*\b|\bdeposited\b", text, re.I)
+    places = re.search(
+        r"\brepositor\w+|\barchive\b|https?:|\bwww\.|\bdoi\b|\bonline\b|\bsupplement\w*|\bwebsite\b"
+        r"|\bpublic\w*\b|\bdeposited\b",
+        text,
+        re.I,
+    )
     if _ON_REQUEST.search(text):
         return tuple((name, "partly") for name in things)
     return tuple((name, "yes") for name in things) if places else ()

@@ -29,19 +29,30 @@ def check_office_file(data: bytes, name: str) -> None:
         with zipfile.ZipFile(io.BytesIO(data)) as archive:
             _check_parts(archive, name)
     except (zipfile.BadZipFile, EOFError, OSError, RuntimeError, NotImplementedError, ValueError, zlib.error):
-        raise Refusal(name, "the .docx file is cut short or damaged", allowed, "Copy it again or save it anew") from None
+        raise Refusal(
+            name, "the .docx file is cut short or damaged", allowed, "Copy it again or save it anew"
+        ) from None
 
 
 def _check_parts(archive: zipfile.ZipFile, name: str) -> None:
     parts = archive.infolist()
     names = {part.filename for part in parts}
     if "word/document.xml" not in names and "[Content_Types].xml" not in names:
-        raise Refusal(name, "the archive holds no document", "a .docx file", "Save the manuscript as .docx and try again")
+        raise Refusal(
+            name, "the archive holds no document", "a .docx file", "Save the manuscript as .docx and try again"
+        )
     xml = [part for part in parts if part.filename.lower().endswith((".xml", ".rels"))]
     sizes = [part.file_size for part in xml]
-    if len(parts) > MOST_PARTS or len(names) < len(parts) or max(sizes, default=0) > LARGEST_PART or sum(sizes) > LARGEST_TEXT:
+    if (
+        len(parts) > MOST_PARTS
+        or len(names) < len(parts)
+        or max(sizes, default=0) > LARGEST_PART
+        or sum(sizes) > LARGEST_TEXT
+    ):
         what = "the file would unpack to more than a manuscript holds"
-        raise Refusal(name, what, f"parts of at most {LARGEST_PART // 1024**2} MiB", "Ask for a plain copy of the manuscript")
+        raise Refusal(
+            name, what, f"parts of at most {LARGEST_PART // 1024**2} MiB", "Ask for a plain copy of the manuscript"
+        )
     if sum(part.file_size for part in parts) > 4 * LARGEST_TEXT:
         raise Refusal(name, "a picture or file inside is too large", remedy="Save the manuscript with smaller pictures")
     for part in parts:
@@ -56,4 +67,9 @@ def _check_declarations(archive: zipfile.ZipFile, part: zipfile.ZipInfo, name: s
         text = stream.read(part.file_size + 1)
     plain = text.replace(b"\0", b"")  # so that UTF-16 cannot hide one
     if b"<!DOCTYPE" in plain or b"<!ENTITY" in plain:
-        raise Refusal(name, "the file declares XML entities, which no .docx needs", "a plain .docx file", "Save the manuscript anew")
+        raise Refusal(
+            name,
+            "the file declares XML entities, which no .docx needs",
+            "a plain .docx file",
+            "Save the manuscript anew",
+        )

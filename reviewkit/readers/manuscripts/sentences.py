@@ -7,14 +7,22 @@ from dataclasses import dataclass
 from reviewkit.readers.manuscripts.manuscript import Manuscript
 
 LONGEST_QUOTE = 300
-_ABBREVIATIONS = r"(?<!\be\.g)(?<!\bi\.e)(?<!\bal)(?<!\bvs)(?<!\bcf)(?<!\bFig)(?<!\bEq)(?<!\bTab)(?<!\bNo)(?<!\bapprox)(?<!\b[A-Z])"
+LONGEST_SENTENCE = 2000
+"""Characters of a sentence that are looked at."""
+_ABBREVIATIONS = (
+    r"(?<!\be\.g)(?<!\bi\.e)(?<!\bal)(?<!\bvs)(?<!\bcf)(?<!\bFig)(?<!\bEq)(?<!\bTab)(?<!\bNo)(?<!\bapprox)(?<!\b[A-Z])"
+)
 _END = re.compile(_ABBREVIATIONS + r"[.!?][\"”’)]?\s+(?=[\"“‘(]?[A-Z0-9])")
 _NEGATION = re.compile(
-    r"\b(?:not|never|no|without|nor|neither|cannot|rather than|instead of|n't|unlike|avoid\w*|refrain\w*|abstain\w*)\b|n['’]t\b", re.I
+    r"\b(?:not|never|no|without|nor|neither|cannot|rather than|instead of|n't|unlike|avoid\w*|refrain\w*"
+    r"|abstain\w*)\b|n['’]t\b",
+    re.I,
 )
 _BESIDE = re.compile(
-    r"\brobustness\b|\balternativ\w+|\bappendix\b|\balso (?:estimate|fit|run|report|use)|\bas a check\b|\bsensitiv\w+|\bfor comparison\b"
-    r"|\bpreviou\w*|\bearlier\b|\bprior (?:work|stud|research|literature)|\bother (?:studies|authors|papers|work)|\bliterature\b"
+    r"\brobustness\b|\balternativ\w+|\bappendix\b|\balso (?:estimate|fit|run|report|use)|\bas a check\b"
+    r"|\bsensitiv\w+|\bfor comparison\b"
+    r"|\bpreviou\w*|\bearlier\b|\bprior (?:work|stud|research|literature)|\bother (?:studies|authors"
+    r"|papers|work)|\bliterature\b"
     r"|\bet al\b|\bone (?:could|might|may)\b|\bwould\b|\bcould (?:have|be|also)\b|\bif we\b|\bhad we\b|\?\s*$",
     re.IGNORECASE,
 )
@@ -42,7 +50,9 @@ def sentences_of(manuscript: Manuscript) -> tuple[Sentence, ...]:
 
 def _sentences(manuscript: Manuscript) -> Iterator[Sentence]:
     for paragraph in manuscript.paragraphs:
-        listed = re.match(r"^(?:\d+\.?\s*)?(?:references|bibliography|works cited|literature)\b", paragraph.heading, re.I)
+        listed = re.match(
+            r"^(?:\d+\.?\s*)?(?:references|bibliography|works cited|literature)\b", paragraph.heading, re.I
+        )
         if not paragraph.is_heading and not listed:
             yield from (Sentence(text, paragraph.place, paragraph.heading) for text in split(paragraph.text))
 
@@ -53,7 +63,7 @@ def split(text: str) -> tuple[str, ...]:
     for end in _END.finditer(text):
         parts.append(text[start : end.end()].strip())
         start = end.end()
-    return tuple(part for part in (*parts, text[start:].strip()) if part)
+    return tuple(part[:LONGEST_SENTENCE] for part in (*parts, text[start:].strip()) if part)
 
 
 def denied(sentence: str, start: int, end: int) -> bool:

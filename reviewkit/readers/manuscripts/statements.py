@@ -155,7 +155,9 @@ def _on_model(sentences: tuple[Sentence, ...], errors: Reading[tuple[str, tuple[
         yield _fact("checks.shown", every, checks[0][1])
 
 
-def _on_claim(manuscript: Manuscript, sentences: tuple[Sentence, ...], about: tuple[str, tuple[str, ...]]) -> Iterator[Fact]:
+def _on_claim(
+    manuscript: Manuscript, sentences: tuple[Sentence, ...], about: tuple[str, tuple[str, ...]]
+) -> Iterator[Fact]:
     focus, levels = about
     percents = _readings(sentences, percent_claim)
     abstract = [each for each in percents if re.search(r"\babstract\b|\bsummary\b", each[1].heading, re.I)]
@@ -204,13 +206,17 @@ def _on_row(table: ManuscriptTable, row: PrintedRow, levels: tuple[str, ...]) ->
     shown = Sentence(f"{row.term}: {row.estimate.text}", table.place(row.row), "")
     yield _fact("claim.coefficient", row.estimate, shown, CLAIM)
     if row.std_error:
-        yield _fact("claim.std_error", row.std_error, Sentence(f"{shown.text} ({row.std_error.text})", shown.place, ""), CLAIM)
+        yield _fact(
+            "claim.std_error", row.std_error, Sentence(f"{shown.text} ({row.std_error.text})", shown.place, ""), CLAIM
+        )
     for name, counted in (
         ("n.printed", count_in_column(table, row.column)),
         ("errors.clusters", clusters_in_column(table, row.column, levels)),
     ):
         if counted:
-            quote = " ".join(cell for cell in (table.rows[counted[1] - 1][0], table.rows[counted[1] - 1][row.column]) if cell)
+            quote = " ".join(
+                cell for cell in (table.rows[counted[1] - 1][0], table.rows[counted[1] - 1][row.column]) if cell
+            )
             yield _fact(name, counted[0], Sentence(quote, table.place(counted[1]), ""))
 
 

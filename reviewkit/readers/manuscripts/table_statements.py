@@ -8,17 +8,26 @@ from reviewkit.readers.manuscripts.manuscript import ManuscriptTable
 from reviewkit.readers.manuscripts.model_statements import plural
 from reviewkit.refusals import Refusal
 
-_COUNT_ROW = re.compile(r"^\s*(?:N|n|obs\.?|observations?|(?:no\.?|number|#) of (?:obs\.?|observations?)|sample size)\s*(?:\(.*\))?\s*$", re.I)
+_COUNT_ROW = re.compile(
+    r"^\s*(?:N|n|obs\.?|observations?|(?:no\.?|number|#) of (?:obs\.?|observations?)|sample size)\s*(?:\(.*\))?\s*$",
+    re.I,
+)
 _CLUSTER_ROW = re.compile(r"^\s*(?:clusters?|(?:no\.?|number|#) of clusters?)\s*$", re.I)
 _NOT_A_TERM = re.compile(
-    r"^\s*(?:N|obs|observations?|r-?\s?(?:squared|2|²)|adj\w*|constant|intercept|\(?constant\)?|f[- ]stat\w*|mean|sd|s\.d\.|clusters?|number|no\.|log[- ]likelihood|aic|bic)\b|effects?\b|controls?\b",
+    r"^\s*(?:N|obs|observations?|r-?\s?(?:squared|2|²)|adj\w*|constant|intercept|\(?constant\)?"
+    r"|f[- ]stat\w*|mean|sd|s\.d\.|clusters?|number|no\.|log[- ]likelihood|aic|bic)\b|effects?\b"
+    r"|controls?\b",
     re.I,
-)  # fmt: skip
+)
 _FIGURE = re.compile(r"^[-−–]?\s?\d{0,6}[.,]\d{1,6}\s*[*†‡]{0,4}$")
 _BRACKETED = re.compile(r"^[(\[]\s*\d{0,6}[.,]\d{1,6}\s*[)\]]\s*[*†‡]{0,4}$")
 _IN_CELL = re.compile(r"^([-−–]?\s?\d{0,6}[.,]\d{1,6}\s*[*†‡]{0,4})\s*[(\[]\s*(\d{0,6}[.,]\d{1,6})\s*[)\]]$")
 _ERRORS_BELOW = re.compile(r"\b(?:standard errors?|s\.e\.)\b[^.;]*\b(?:parenthes[ei]s|brackets?)", re.I)
-_OTHERS_BELOW = re.compile(r"\b(?:t[- ](?:statistics?|values?|ratios?)|p[- ]values?|z[- ]\w+|confidence intervals?)\b[^.;]*\b(?:parenthes[ei]s|brackets?)", re.I)
+_OTHERS_BELOW = re.compile(
+    r"\b(?:t[- ](?:statistics?|values?|ratios?)|p[- ]values?|z[- ]\w+"
+    r"|confidence intervals?)\b[^.;]*\b(?:parenthes[ei]s|brackets?)",
+    re.I,
+)
 
 
 @dataclass(frozen=True, slots=True)
@@ -38,7 +47,8 @@ def coefficient_rows(table: ManuscriptTable) -> tuple[PrintedRow, ...]:
     for place, row in enumerate(table.rows):
         if not row or not row[0] or _NOT_A_TERM.search(row[0]):
             continue
-        below = table.rows[place + 1] if place + 1 < len(table.rows) and not table.rows[place + 1][0] else ()
+        below = table.rows[place + 1] if place + 1 < len(table.rows) else ()
+        below = () if any(below[:1]) else below
         for column in range(1, len(row)):
             read = _read_cell(row[column], below[column] if column < len(below) else "", _errors_in_brackets(table))
             if read:

@@ -21,7 +21,12 @@ def read_model_line(text: str) -> ModelLine:
     if not text.strip():
         raise Refusal("model line", "the line is empty", _ALLOWED)
     if len(text) > LONGEST:
-        raise Refusal("model line", f"the text has {len(text):,} characters", f"at most {LONGEST:,}", "Paste the one line that fits the model")
+        raise Refusal(
+            "model line",
+            f"the text has {len(text):,} characters",
+            f"at most {LONGEST:,}",
+            "Paste the one line that fits the model",
+        )
     try:
         found = _read(text)
     except Unreadable as why:

@@ -28,7 +28,9 @@ _PREFIX = re.compile(
     r"^\s*(?:qui(?:e(?:t(?:ly?)?)?)?|n(?:oi(?:s(?:i(?:ly?)?)?)?)?|cap(?:t(?:u(?:re?)?)?)?|xi|eststo(?:\s+[\w*]+)?)\b\s*(?:,[^:]*)?:?\s*(?=\S)",
     re.IGNORECASE,
 )
-_BY = re.compile(r"^\s*(?:by|bys|byso|bysor|bysort|svy|bootstrap|bs|jackknife|mi\s+est\w*|statsby|rolling|permute|simulate)\b[^:]*:\s*")
+_BY = re.compile(
+    r"^\s*(?:by|bys|byso|bysor|bysort|svy|bootstrap|bs|jackknife|mi\s+est\w*|statsby|rolling|permute|simulate)\b[^:]*:\s*"
+)
 _WEIGHTS = {"a": "analytic", "p": "probability", "f": "frequency"}
 _HARMLESS = re.compile(
     r"^(?:irr|or|eform|level|l|beta|nohe\w*|noheader|nolog|log|notab\w*|vsquish|dots|verbose|keepsing\w*|nolstretch|"
@@ -87,10 +89,18 @@ def starts_like_dot_do(text: str) -> bool:
 
 def _lines(text: str) -> list[str]:
     """Logical lines: comments out, joined lines joined."""
-    joined = re.sub(r"[ \t]///[^\n]*(?:\n|$)", " ", re.sub(r"/\*.{0,20000}?\*/", " ", text, flags=re.DOTALL))
+    joined = re.sub(r"[ \t]///[^\n]*(?:\n|$)", " ", _without_block_comments(text))
     plain = re.sub(r"(?:^|(?<=\s))//[^\n]*", "", joined)
     lines = (line.strip().rstrip(";").strip() for line in re.split(r"[\n]|;\s*(?=\w+\s)", plain))
     return [line for line in (re.sub(r"^\.\s+", "", each) for each in lines) if line and not line.startswith("*")]
+
+
+def _without_block_comments(text: str) -> str:
+    parts, start = [], 0
+    while (opening := text.find("/*", start)) >= 0 and (closing := text.find("*/", opening + 2)) >= 0:
+        parts.append(text[start:opening])
+        start = closing + 2
+    return " ".join([*parts, text[start:]])
 
 
 def _without_prefixes(line: str, pieces: Pieces) -> str:
@@ -273,8 +283,21 @@ def _absorbed(inside: str, pieces: Pieces) -> None:
 def _family(option: str, inside: str, pieces: Pieces) -> None:
     word = inside.split()[0] if inside.split() else ""
     if option.startswith("f"):
-        families = {"poisson": "poisson", "p": "poisson", "gamma": "gamma", "gam": "gamma", "nbinomial": "negbin", "nb": "negbin"}
-        families |= {"gaussian": "ols", "gau": "ols", "binomial": "fractional_logit", "bin": "fractional_logit", "b": "fractional_logit"}
+        families = {
+            "poisson": "poisson",
+            "p": "poisson",
+            "gamma": "gamma",
+            "gam": "gamma",
+            "nbinomial": "negbin",
+            "nb": "negbin",
+        }
+        families |= {
+            "gaussian": "ols",
+            "gau": "ols",
+            "binomial": "fractional_logit",
+            "bin": "fractional_logit",
+            "b": "fractional_logit",
+        }
         if word in families:
             pieces.model["estimator"] = families[word]
         else:
@@ -301,10 +324,18 @@ def _weights(text: str, pieces: Pieces) -> None:
 
 def _after(name: str, pieces: Pieces, options: list[str]) -> None:
     link = pieces.model.pop("_link", "")
-    natural = {"ols": ("identity", "i", "id"), "fractional_logit": ("logit", "l"), "poisson": ("log",), "gamma": ("log",), "negbin": ("log",)}
+    natural = {
+        "ols": ("identity", "i", "id"),
+        "fractional_logit": ("logit", "l"),
+        "poisson": ("log",),
+        "gamma": ("log",),
+        "negbin": ("log",),
+    }
     estimator = str(pieces.model.get("estimator", ""))
     if name == "glm" and ((link and link not in natural.get(estimator, ())) or (estimator == "gamma" and not link)):
-        pieces.leave(f"link({shown(link) or 'default'})", "only the usual link of each family is covered, for gamma the log")
+        pieces.leave(
+            f"link({shown(link) or 'default'})", "only the usual link of each family is covered, for gamma the log"
+        )
         pieces.model.pop("estimator", None)
     if name == "glm" and not estimator:
         pieces.leave("glm", "the family is not known; say the estimator")

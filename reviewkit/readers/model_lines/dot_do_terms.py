@@ -2,12 +2,14 @@
 
 import re
 from itertools import combinations, product
+from math import prod
 
 from reviewkit.readers.model_lines.pieces import Pieces
 
 _NAME = r"[^\W\d]\w*"
-_PIECE = re.compile(rf"^(?:(?P<operators>[\w()]*)\.)?(?P<names>{_NAME}|\((?:{_NAME}|\s|\w*\.)+\))$")
+_PIECE = re.compile(rf"^(?:(?P<operators>[\w()]*)\.)?(?P<names>{_NAME}|\([\w.\s]+\))$")
 _LAG = re.compile(r"(?:^|[#(\s])[cio]*[LFDS]\d*(?:\([^)]*\))?\.(?=[^\W\d(])", re.IGNORECASE)
+_MOST_TERMS = 200
 _BASE = re.compile(r"^i?b(\d+)$")
 
 
@@ -35,7 +37,8 @@ def read_varlist(body: str, pieces: Pieces) -> None:
 
 def _words(body: str) -> list[str]:
     """Words separated by blanks outside of brackets."""
-    words, depth, word = [], 0, ""
+    words: list[str] = []
+    depth, word = 0, ""
     for letter in body:
         depth = max(0, depth + (letter == "(") - (letter == ")"))
         if letter.isspace() and depth == 0:
@@ -54,7 +57,11 @@ def _why_left(word: str) -> str:
         return "this old way of writing products is not covered; write both terms and the product"
     if _LAG.search(word):
         return "lags need the order of the data, which a specification does not hold; make a column of it first"
-    if word == "_all" or "?" in word or re.search(r"(?:^|\w|\*)\*(?:$|\w*$)", word) and not re.search(r"^i\.\w+\*[\w.]", word):
+    if (
+        word == "_all"
+        or "?" in word
+        or (re.search(r"(?:^|\w|\*)\*(?:$|\w*$)", word) and not re.search(r"^i\.\w+\*[\w.]", word))
+    ):
         return "a wildcard stands for columns that are not named in this line; name them"
     if re.fullmatch(rf"{_NAME}-{_NAME}", word):
         return "a range stands for columns by their order in the data; name them"
@@ -69,14 +76,14 @@ def _terms(word: str) -> list[str]:
         word = "##".join(part if "." in part else f"c.{part}" for part in word.split("*"))
     crossed = [re.split(r"#", part) for part in re.split(r"##", word)]
     groups = [[_alternatives(piece, len(crossed) > 1 or len(group) > 1) for piece in group] for group in crossed]
+    if len(groups) > 5 or prod(len(each) for group in groups for each in group) > _MOST_TERMS:
+        raise Left("crossing so many terms is not covered; write them out")
     joined = [[tuple(chosen) for chosen in product(*group)] for group in groups]
     terms: list[str] = []
     for count in range(1, len(joined) + 1):
         for chosen_groups in combinations(joined, count):
             for chosen in product(*chosen_groups):
                 terms.append(_product(tuple(part for parts in chosen for part in parts)))
-    if len(terms) > 400:
-        raise Left("crossing so many terms is not covered; write them out")
     return list(dict.fromkeys(terms))
 
 
@@ -105,6 +112,6 @@ def _part(operators: str | None, name: str, in_product: bool) -> str:
     base = _BASE.match(operators)
     if operators == "i" or base:
         return f"factor({name}, base={base[1]})" if base else f"factor({name})"
-    if operators.isdigit() or operators.startswith("i") and operators[1:].isdigit():
+    if operators.isdigit() or (operators.startswith("i") and operators[1:].isdigit()):
         raise Left("an indicator of a single class is not covered; make a column of it")
     raise Left("this choice of base or omitted classes is not covered; say factor(column, base=…)")

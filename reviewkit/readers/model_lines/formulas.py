@@ -27,6 +27,7 @@ _FUNCTIONS = {
 _FACTORS = ("factor", "as.factor", "C", "i", "ordered", "as_factor", "forcats::as_factor")
 _LAGS = ("lag", "l", "d", "f", "L", "D", "F", "lead", "diff", "dplyr::lag", "shift")
 _MOST_CROSSED = 4
+_MOST_TERMS = 200
 
 
 class Left(Exception):
@@ -54,7 +55,10 @@ def read_formula(text: str, pieces: Pieces, square_in_formula: bool = False) -> 
         _add_absorbed(parts[0], pieces)
     for part in parts[1:]:
         if written(bare(part)) != "0":
-            pieces.leave(f"| {written(part)}", "instruments are not covered" if "~" in written(part) else "a third part of the formula")
+            pieces.leave(
+                f"| {written(part)}",
+                "instruments are not covered" if "~" in written(part) else "a third part of the formula",
+            )
 
 
 def _between_bars(tree: Tree) -> list[Tree]:
@@ -129,9 +133,11 @@ def _terms(tree: Tree, pieces: Pieces, square_in_formula: bool) -> list[str]:
     match tree:
         case Operation("*", left, right):
             first, second = (_terms(each, pieces, square_in_formula) for each in (left, right))
+            _check_count(len(first) * len(second))
             return [*first, *second, *(f"{a}:{b}" for a in first for b in second if a != b)]
         case Operation(":", left, right):
             first, second = (_terms(each, pieces, square_in_formula) for each in (left, right))
+            _check_count(len(first) * len(second))
             return [f"{a}:{b}" if a != b else a for a in first for b in second]
         case Operation("^" | "**", base, power):
             return _power(tree, bare(base), bare(power), pieces, square_in_formula)
@@ -141,6 +147,9 @@ def _terms(tree: Tree, pieces: Pieces, square_in_formula: bool) -> list[str]:
             return [_part(tree)]
 
 
+def _check_count(count: int) -> None:
+    if count > _MOST_TERMS:
+        raise Left("crossing so many terms is not covered; write them out")
 
 
 def _power(tree: Tree, base: Tree, power: Tree, pieces: Pieces, square: bool) -> list[str]:
@@ -162,13 +171,15 @@ def _power(tree: Tree, base: Tree, power: Tree, pieces: Pieces, square: bool) ->
 def _part(tree: Tree) -> str:
     """One part of a term: a column, a transform, a power or a factor."""
     column = column_named(tree)
-    if column == "." or isinstance(tree, Name) and tree.text == ".":
+    if column == "." or (isinstance(tree, Name) and tree.text == "."):
         raise Left("`.` means all other columns; name those of the model")
     if column:
         return plain_column(column)
     match tree:
         case Call(function, _) if function in _LAGS:
-            raise Left("lags need the order of the data, which a specification does not hold; make a column of it first")
+            raise Left(
+                "lags need the order of the data, which a specification does not hold; make a column of it first"
+            )
         case Call(function, _) if function in _FACTORS or function in ("relevel", "stats::relevel"):
             return _factor(tree)
         case Call("I", (("", inner),)):
@@ -190,7 +201,11 @@ def _factor(tree: Call) -> str:
     base = None
     for name, value in others:
         reference = bare(value)
-        if isinstance(reference, Call) and reference.function in ("Treatment", "contr.treatment") and reference.arguments:
+        if (
+            isinstance(reference, Call)
+            and reference.function in ("Treatment", "contr.treatment")
+            and reference.arguments
+        ):
             name, reference = "ref", bare(reference.arguments[0][1])
         if name not in ("ref", "reference") or not isinstance(reference, Text | Number):
             raise Left("of a factor's settings only the base class is covered")
@@ -221,5 +236,3 @@ def _arithmetic(tree: Tree) -> str:
         case Operation("+" | "-" | "*" | "/" as operator, left, right):
             return f"({_arithmetic(left)} {operator} {_arithmetic(right)})"
     raise Left("this arithmetic is not one a specification can hold")
-
-

@@ -90,7 +90,10 @@ class Pieces:
         column = str(self.outcome.get("column", ""))
         if self.outcome.get("transform") == "none" and (_LOGGED.search(column) or _OTHER_TRANSFORM.match(column)):
             what = "a log" if _LOGGED.search(column) else "a transform"
-            self.hint(f"`{shown(column)}` may already be {what} in the data; name the column it was made from, if there is one")
+            self.hint(
+                f"`{shown(column)}` may already be {what} in the data; name the column it was made from, if there"
+                " is one"
+            )
         if self.model.get("exposure") and self.outcome.get("transform", "none") != "none":
             self.leave("exposure", "say whether the transformed outcome was divided by it (per_exposure)")
             del self.model["exposure"]

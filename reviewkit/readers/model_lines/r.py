@@ -16,20 +16,28 @@ _ESTIMATORS = {
     "glm.nb": "negbin", "fenegbin": "negbin", "betareg": "beta", "glm": "", "feglm": "",
 }  # fmt: skip
 _ELSEWHERE = (
-    "ivreg", "iv_robust", "lmer", "glmer", "rq", "tobit", "censReg", "coxph", "gam", "polr", "multinom", "zeroinfl", "hurdle", "nls",
-    "femlm", "fenegbin2",
+    "ivreg", "iv_robust", "lmer", "glmer", "rq", "tobit", "censReg", "coxph", "gam", "polr", "multinom", "zeroinfl",
+    "hurdle", "nls", "femlm",
 )  # fmt: skip
 _FAMILIES = {
     "poisson": "poisson", "quasipoisson": "poisson", "gaussian": "ols", "Gamma": "gamma", "binomial": "logit",
     "quasibinomial": "fractional_logit",
 }  # fmt: skip
-_LINKS = {"poisson": "log", "quasipoisson": "log", "gaussian": "identity", "Gamma": "inverse", "binomial": "logit", "quasibinomial": "logit"}
+_LINKS = {
+    "poisson": "log",
+    "quasipoisson": "log",
+    "gaussian": "identity",
+    "Gamma": "inverse",
+    "binomial": "logit",
+    "quasibinomial": "logit",
+}
 _USUAL = _LINKS | {"Gamma": "log"}
 _SQUARES = ("feols", "fepois", "feglm", "fenegbin")
 """Functions in whose formulas `x^2` is the square of x."""
 _HARMLESS = (
-    "na.action", "model", "x", "y", "qr", "singular.ok", "notes", "warn", "nthreads", "verbose", "lean", "mem.clean", "combine.quick",
-    "control", "start", "method", "maxit", "epsilon", "ci", "alpha", "return_vcov", "try_cholesky", "exactDOF", "keepX", "keepCX",
+    "na.action", "model", "x", "y", "qr", "singular.ok", "notes", "warn", "nthreads", "verbose", "lean", "mem.clean",
+    "combine.quick", "control", "start", "method", "maxit", "epsilon", "ci", "alpha", "return_vcov", "try_cholesky",
+    "exactDOF", "keepX", "keepCX",
 )  # fmt: skip
 
 
@@ -66,7 +74,10 @@ def _model_call(tree: Tree, pieces: Pieces) -> Call | None:
             return _piped(left, bare(right), pieces)
         case Call() if _short(tree.function) in _ESTIMATORS or _short(tree.function) in _ELSEWHERE:
             return replace(tree, function=_short(tree.function))
-        case Call("summary" | "coeftest" | "print" | "tidy" | "lmtest::coeftest" | "etable" | "modelsummary" | "broom::tidy", arguments):
+        case Call(
+            "summary" | "coeftest" | "print" | "tidy" | "lmtest::coeftest" | "etable" | "modelsummary" | "broom::tidy",
+            arguments,
+        ):
             found = _model_call(arguments[0][1], pieces) if arguments else None
             return _with_outer_errors(found, tree, pieces) if found else None
         case _:
@@ -253,7 +264,9 @@ def _variance(call: Call, value: Tree, pieces: Pieces) -> None:
     elif isinstance(inner, Name) and re.search(r"vcovHC$", kind):
         pieces.robust("HC3")
     else:
-        pieces.leave(f"standard errors {written(value)}", "of these, classical, HC0 to HC3 and clustered ones are covered")
+        pieces.leave(
+            f"standard errors {written(value)}", "of these, classical, HC0 to HC3 and clustered ones are covered"
+        )
         pieces.errors = {} if pieces.errors.get("kind") != "cluster" else pieces.errors
 
 
@@ -279,7 +292,8 @@ def _panel(name: str, value: Tree, pieces: Pieces) -> None:
 
 def _data(call: Call, pieces: Pieces) -> None:
     """A condition that stands where the data are named: subset(d, …), filter(d, …), d[…, ]."""
-    _, *placed = call.unnamed() if call.named("formula", "fml") is None else (None, *call.unnamed())
+    unnamed = call.unnamed()
+    placed = list(unnamed if call.named("formula", "fml") is not None else unnamed[1:])
     placed = [each for each in placed if _family_name(each) not in _FAMILIES]
     data = bare(call.named("data") or (placed.pop(0) if placed else Name("data")))
     for each in placed:
@@ -311,7 +325,10 @@ def _default_errors(call: Call, pieces: Pieces) -> None:
     if call.function == "lm_robust" and not clusters:
         pieces.robust("HC2")
     elif call.function in _SQUARES and pieces.model.get("absorb"):
-        pieces.leave(call.function, "its default errors depend on its version (classical, or clustered by the first effect); say which")
+        pieces.leave(
+            call.function,
+            "its default errors depend on its version (classical, or clustered by the first effect); say which",
+        )
     else:
         pieces.errors = {"kind": "classical"}
 
@@ -320,5 +337,3 @@ def looks_like_r(text: str) -> bool:
     """Whether a line has a model call of R."""
     names = "|".join(map(re.escape, (*_ESTIMATORS, *_ELSEWHERE)))
     return bool(re.search(rf"(?<![\w.])(?:{names})\s*\(", text)) and "~" in text
-
-

@@ -5,7 +5,19 @@ from collections.abc import Iterator
 from reviewkit.expressions import Binary, Column, Literal, Member, Node, Unary
 from reviewkit.readers.model_lines.outcomes import column_named
 from reviewkit.readers.model_lines.pieces import Pieces
-from reviewkit.readers.model_lines.syntax import Call, Name, Number, Operation, Prefix, Text, Tree, Unreadable, bare, parse, written
+from reviewkit.readers.model_lines.syntax import (
+    Call,
+    Name,
+    Number,
+    Operation,
+    Prefix,
+    Text,
+    Tree,
+    Unreadable,
+    bare,
+    parse,
+    written,
+)
 
 _COMPARISONS = {"==": "==", "!=": "!=", "~=": "!=", "<": "<", "<=": "<=", ">": ">", ">=": ">="}
 _CONNECTIVES = {"&": "and", "&&": "and", "|": "or", "||": "or"}
@@ -64,7 +76,9 @@ def _condition(tree: Tree) -> Node:
 
 def _negated(operand: Tree) -> Node:
     if isinstance(operand, Call) and operand.function in _MISSING_CALLS:
-        raise Untranslatable("rows with a missing value are left out where the column is in the model; elsewhere that cannot be said")
+        raise Untranslatable(
+            "rows with a missing value are left out where the column is in the model; elsewhere that cannot be said"
+        )
     if column_named(operand):
         return Binary("==", _value(operand), Literal(0.0))
     return Unary("not", _condition(operand))
@@ -72,7 +86,9 @@ def _negated(operand: Tree) -> Node:
 
 def _comparison(operator: str, left: Tree, right: Tree) -> Node:
     if any(isinstance(each, Name) and each.text.startswith(".") and len(each.text) <= 2 for each in (left, right)):
-        raise Untranslatable("rows with a missing value are left out where the column is in the model; elsewhere that cannot be said")
+        raise Untranslatable(
+            "rows with a missing value are left out where the column is in the model; elsewhere that cannot be said"
+        )
     return Binary(operator, _value(left), _value(right))
 
 
@@ -80,7 +96,7 @@ def _called(function: str, values: tuple[Tree, ...]) -> Node:
     match function, values:
         case "inlist", (item, first, *others):
             return Member(_value(item), tuple(_literal(each) for each in (first, *others)))
-        case ("inrange" | "between"), (item, low, high):
+        case (("inrange" | "between"), (item, low, high)):
             inside = _value(item)
             return Binary("and", Binary(">=", inside, _value(low)), Binary("<=", inside, _value(high)))
         case name, _ if name in _MISSING_CALLS:
@@ -121,5 +137,3 @@ def _value(tree: Tree) -> Node:
         case Name(text):
             raise Untranslatable(f"`{text[:20]}` depends on the order of the rows or on what is not in this line")
     return Literal(_literal(tree))
-
-

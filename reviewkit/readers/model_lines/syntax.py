@@ -16,6 +16,8 @@ _TOKEN = re.compile(
     r"|(?P<sign>%[^%\s]{0,12}%|<-|->|\|>|\*\*|<=|>=|==|!=|~=|&&|\|\||\#\#|[-+*/^:()\[\]{},~|=<>&!$@\#;]))"
 )
 
+_PLAIN_NAME = re.compile(r"[\w.:]+")
+
 _LEFT = {
     "->": (1, 2), "<-": (2, 1), "~": (3, 4), "||": (5, 6), "|": (5, 6), "&&": (7, 8), "&": (7, 8),
     "==": (11, 12), "!=": (11, 12), "~=": (11, 12), "<": (11, 12), ">": (11, 12), "<=": (11, 12), ">=": (11, 12),
@@ -120,11 +122,12 @@ def written(tree: "Tree | None") -> str:
     """The tree as text, for showing and for comparing."""
     match tree:
         case Name(text):
-            return text
+            return text if _PLAIN_NAME.fullmatch(text) else f"`{text}`"
         case Number(value):
             return f"{value:.12g}"
         case Text(text):
-            return f'"{text}"'
+            escaped = re.sub(r'([\\"])', r"\\\1", text)
+            return f'"{escaped}"'
         case Call(function, arguments):
             inner = ", ".join(f"{name} = {written(value)}" if name else written(value) for name, value in arguments)
             return f"{function}({inner})"
