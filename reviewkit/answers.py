@@ -19,7 +19,7 @@ class Act(StrEnum):
     REJECT = "reject"  # a proposal is wrong; the question is asked instead
     SKIP = "skip"  # not looked at: stays open
     UNDO = "undo"  # takes back the last of the three above
-    REMARK = "remark"  # for the editor's side only
+    REMARK = "remark"  # for the referee alone
 
 
 _UNDOABLE = (Act.ANSWER, Act.REJECT, Act.SKIP)
@@ -99,8 +99,3 @@ def rejected(entries: Iterable[Entry]) -> frozenset[tuple[str, str, str]]:
     """Subject, name and value (as text) of the proposals that were said to be wrong."""
     held = standing_entries(entries)
     return frozenset((each.subject, each.name, str(each.value)) for each in held if each.act is Act.REJECT)
-
-
-def remarks(entries: Iterable[Entry]) -> tuple[Entry, ...]:
-    """The referee's remarks, as they came."""
-    return tuple(each for each in entries if each.act is Act.REMARK)

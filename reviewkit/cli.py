@@ -92,7 +92,7 @@ def interview(
     """Ask what can still change a point; also builds the specification."""
     from reviewkit import casefolder, interview_screen, review, unattended
 
-    folder = casefolder.open_case(case)
+    folder, book = casefolder.open_case(case), None
     with casefolder.working_in(folder):
         if answers is not None:
             count = unattended.take_answers(folder, answers)
@@ -102,7 +102,8 @@ def interview(
             interview_screen.refresh(folder, screen)
             folder, asked = review.open_interview(case, minutes is not None, tuple(again or ()))
             interview_screen.closing(interview_screen.hold(folder, asked, screen), screen)
-    _after(review.look(case), as_json)
+            book = asked.book
+    _after(review.look(case, book), as_json)
 
 
 @app.command()

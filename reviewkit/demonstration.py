@@ -16,20 +16,20 @@ STUDY = "study.toml"
 def run(folder: Path, say: Callable[[str], None]) -> tuple[Path, ...]:
     """Begin, interview, refit and draft for each study below a new folder; the notes that were written."""
     studies = sorted(each.parent for each in shipped.demo_folder().glob(f"*/{STUDY}"))
-    if folder.exists() and (not folder.is_dir() or any(folder.iterdir())):
-        raise Refusal(
-            folder.name, "this exists already", "a new or an empty folder", "Name another: `reviewkit demo DIR`"
-        )
+    ours = {study.name for study in studies}
+    if folder.exists() and (not folder.is_dir() or any(each.name not in ours for each in folder.iterdir())):
+        raise Refusal(folder.name, "this holds other things", "a new folder", "Name another: `reviewkit demo DIR`")
     return tuple(path for study in studies for path in _run_study(study, folder / study.name, say))
 
 
 def _run_study(study: Path, folder: Path, say: Callable[[str], None]) -> tuple[Path, ...]:
     described = tomllib.loads((study / STUDY).read_text("utf-8"))
     materials, case_folder = folder / "received", folder / "case"
-    materials.mkdir(parents=True)
+    materials.mkdir(parents=True, exist_ok=True)
     names = [described["manuscript"], described["answers"], *described.get("data", [])]
     for name in names:
-        shutil.copyfile(study / name, materials / name)
+        if not (materials / name).exists():
+            shutil.copyfile(study / name, materials / name)
     say(f"{study.name}: begin, with {', '.join(name for name in names if name != described['answers'])}")
     given = {Input.MANUSCRIPT: materials / described["manuscript"]}
     if described.get("data"):

@@ -2,6 +2,7 @@
 
 from collections.abc import Iterable
 from dataclasses import dataclass, replace
+from textwrap import shorten
 
 from reviewkit.answers import SPECIFYING, Act, Entry, latest_answers, rejected, settled_facts, standing_entries
 from reviewkit.decisions import Question, decide, next_question
@@ -17,6 +18,7 @@ from reviewkit.wording import share, text
 CONFIRM = "confirm"
 """Name of the prompt that shows many machine readings at once."""
 TOGETHER = "confirmed together"
+LONGEST_QUOTE = 90
 MOST_AT_ONCE = 12
 """Readings on one screen."""
 
@@ -153,7 +155,7 @@ def _confirmation(interview: Interview) -> Prompt | None:
         choices=tuple(_reading(str(number), each, interview) for number, each in enumerate(found, start=1)),
         default=(),
         default_why="all are right",
-        hint="Enter if all are right, or the numbers of those that are wrong",
+        hint="or the numbers of those that are wrong, with blanks between",
         explains="What you confirm counts as your own word; what you call wrong is asked for instead.",
     )
 
@@ -224,7 +226,7 @@ def _judged(fact: Fact, is_wrong: bool) -> Entry:
 def _reading(number: str, fact: Fact, interview: Interview) -> Choice:
     definition = interview.book.vocabulary.get(fact.name)
     label = definition.label if definition is not None and definition.label else fact.name
-    quote = f": “{fact.source.quote}”" if fact.source.quote else ""
+    quote = f": “{shorten(fact.source.quote, LONGEST_QUOTE, placeholder=' …')}”" if fact.source.quote else ""
     return Choice(number, f"{label}: {shown_value(definition, fact.value)}", where_from(fact) + quote)
 
 

@@ -215,7 +215,7 @@ def _commanded(session: Session, prompt: Prompt, command: Command, text: str) ->
             session.screen.faint("left open", "  ")
             return session.recording(Entry(Act.SKIP, prompt.name, prompt.subject))
         case Command.REMARK:
-            session.screen.faint("noted, for you and the editor only", "  ")
+            session.screen.faint("noted; `show` lists it, no note holds it", "  ")
             return session.recording(Entry(Act.REMARK, prompt.name, prompt.subject, text=text))
         case Command.BACK:
             back = undoing(session.interview.entries)

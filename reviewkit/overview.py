@@ -39,9 +39,7 @@ def overview(review: Review, all_facts: bool = False) -> tuple[Part, ...]:
         Part("Points raised", tuple(_finding_line(each) for each in _by_importance(review.in_state(State.RAISED)))),
         Part("Looked at and not raised", tuple(_clear_line(each) for each in review.in_state(State.CLEAR))),
         Part("Open", _open_lines(review)),
-        Part(
-            "Remarks (for the editor's side only)", tuple(each.text for each in review.entries if each.act == "remark")
-        ),
+        Part("Your remarks (in no note)", tuple(each.text for each in review.entries if each.act == "remark")),
         Part("Next", (next_step_of(review),)),
     )
     return tuple(each for each in parts if each.lines)

@@ -233,8 +233,10 @@ def _fitting(choices: tuple[Choice, ...], typed: str) -> Choice | Matches:
     wanted = typed.casefold()
     numbered = tuple(enumerate(choices, start=1))
     tests = (
-        lambda each: wanted in (each.value.casefold(), each.shown.casefold()),
-        lambda each: each.value.casefold().startswith(wanted) or each.shown.casefold().startswith(wanted),
+        lambda each: wanted == each.shown.casefold(),
+        lambda each: each.shown.casefold().startswith(wanted),
+        lambda each: wanted == each.value.casefold(),
+        lambda each: each.value.casefold().startswith(wanted),
         lambda each: wanted in f"{each.value} {each.shown} {each.detail}".casefold(),
     )
     for test in tests:

@@ -6,7 +6,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from reviewkit import casefolder, safekeeping, shipped
-from reviewkit.answers import SPECIFYING, Entry, remarks
+from reviewkit.answers import SPECIFYING, Entry
 from reviewkit.casefolder import CaseFolder, Input, Policy
 from reviewkit.decisions import Disagreement, decide, disagreements, next_question
 from reviewkit.exhibit import Exhibit
@@ -158,9 +158,9 @@ def rule_book(house_folders: tuple[Path, ...] = ()) -> RuleBook:
     return read_rule_book(shipped.rules_folder(), house_folders)
 
 
-def look(folder: Path, house_folders: tuple[Path, ...] = ()) -> Review:
-    """Where the case in `folder` stands."""
-    case, book = casefolder.open_case(folder), rule_book(house_folders)
+def look(folder: Path, book: RuleBook | None = None) -> Review:
+    """Where the case in `folder` stands; `book` where it was read already."""
+    case, book = casefolder.open_case(folder), book or rule_book()
     results, entries = read_results(case), casefolder.read_entries(case)
     facts = facts_of(Interview(given_facts(case, results), book, entries))
     return Review(case, book, facts, decide(facts, book), disagreements(facts), results, entries)
@@ -353,11 +353,6 @@ def is_stale(case: CaseFolder, model: str = "main") -> bool:
         return False
     kept = casefolder.read_results(case, model)
     return kept is None or _is_old(case, model, kept)
-
-
-def editor_remarks(review: Review) -> tuple[str, ...]:
-    """The referee's remarks, for the editor's side only."""
-    return tuple(each.text for each in remarks(review.entries))
 
 
 def next_step_of(review: Review) -> str:

@@ -11,8 +11,8 @@ from reviewkit.prompts import Choice, Prompt
 LIST_AT_ONCE = 15
 WIDEST = 92
 COMMANDS = (
-    "At any question:  ? explains   b goes back   s not looked at   q leaves, all is kept",
-    "  n the paper doesn't say   r WORDS a remark, for you and the editor only",
+    "At any question:  ? explains   b back   s not looked at   q leave, all is kept",
+    "  n the paper doesn't say   r WORDS a remark for yourself, never for the authors",
     "  Behind an answer, ` @ p. 11` notes where you saw it.",
 )
 

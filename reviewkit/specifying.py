@@ -45,6 +45,10 @@ class Specifying:
         """What the pasted line says of that key."""
         return self.understood.get(table, {}).get(key)
 
+    def outcome_has(self, key: str) -> bool:
+        """Whether the line settled that key of the outcome; not where another transform was chosen since."""
+        return self.has("outcome", key) and "transform" not in self.answers
+
     @property
     def without_data(self) -> bool:
         """Whether there is no data file, so that nothing can be re-estimated."""
@@ -182,21 +186,21 @@ def _transform(state: Specifying) -> Prompt | None:
 
 
 def _constant(state: Specifying) -> Prompt | None:
-    if _value(state, "transform") != Transform.LOG_PLUS or state.has("outcome", "constant"):
+    if _value(state, "transform") != Transform.LOG_PLUS or state.outcome_has("constant"):
         return None
     question = "Which constant was added before the log?"
     return _prompt("constant", question, Form.NUMBER, default=1.0, hint="a number, in the unit of the column")
 
 
 def _scale(state: Specifying) -> Prompt | None:
-    if _value(state, "transform") != Transform.ASINH or state.has("outcome", "scale"):
+    if _value(state, "transform") != Transform.ASINH or state.outcome_has("scale"):
         return None
     question = "By which number was the outcome multiplied inside the inverse hyperbolic sine?"
     return _prompt("scale", question, Form.NUMBER, default=1.0, hint="1 where it was taken of the column as it stands")
 
 
 def _zeros(state: Specifying) -> Prompt | None:
-    if _value(state, "transform") != Transform.LOG or state.has("outcome", "zeros"):
+    if _value(state, "transform") != Transform.LOG or state.outcome_has("zeros"):
         return None
     choices = tuple(Choice(value, label) for value, label in _ZEROS.items() if value != "kept")
     question = "A zero has no logarithm. What became of rows with a zero outcome?"
@@ -206,7 +210,7 @@ def _zeros(state: Specifying) -> Prompt | None:
 
 
 def _replacement(state: Specifying) -> Prompt | None:
-    if _value(state, "zeros") != "replaced" or state.has("outcome", "replacement"):
+    if _value(state, "zeros") != "replaced" or state.outcome_has("replacement"):
         return None
     return _prompt(
         "replacement", "Which number stands for the zeros?", Form.NUMBER, hint="a number, in the unit of the column"

@@ -293,6 +293,81 @@ def _plain(value):
     return value if isinstance(value, dict) else {"value": value}
 
 
+# --- re-estimation ------------------------------------------------------------------------------------------------
+
+SPECIFICATION = """
+data = "shops.csv"
+[outcome]
+column = "sales"
+transform = "log"
+[model]
+terms = ["staff"]
+focus = ["staff"]
+[errors]
+kind = "robust"
+type = "HC1"
+"""
+
+
+@pytest.fixture
+def specification(tmp_path):
+    rows = [f"{50 + 7 * (row % 5) + 3 * row % 11},{row % 2}" for row in range(60)]
+    (tmp_path / "shops.csv").write_text("sales,staff\n" + "\n".join(rows) + "\n")
+    path = tmp_path / "shops.toml"
+    path.write_text(SPECIFICATION)
+    return path
+
+
+def test_a_lone_specification_is_re_estimated(specification):
+    done = reviewkit("refit", specification, "--json")
+    assert done.returncode == 0, done.stderr
+    found = json.loads(done.stdout)
+    assert found["models"][0]["submitted"]["n"] == 60
+    assert {each["subject"] for each in found["findings"]} >= {"model:main", "claim:main"}
+
+
+def test_a_wrong_specification_is_one_line_and_status_2(specification, capsys):
+    specification.write_text(SPECIFICATION.replace("staff", "stuff"))
+    assert run(["refit", str(specification)]) == 2
+    assert len(capsys.readouterr().err.strip().splitlines()) == 1
+
+
+def test_what_cannot_be_estimated_is_one_line_and_status_3(specification, capsys):
+    (specification.parent / "shops.csv").write_text("sales,staff\n" + "5,1\n5,0\n" * 20)
+    assert run(["refit", str(specification)]) == 3
+    assert len(capsys.readouterr().err.strip().splitlines()) == 1
+
+
+def test_interrupting_a_re_estimation_keeps_the_earlier_results(case, specification, monkeypatch, tmp_path):
+    from reviewkit import review
+
+    (case / "specification-main.toml").write_text(SPECIFICATION.replace("shops.csv", "../shops.csv"))
+    assert run(["refit", str(case)]) == 0
+    before = (case / "results" / "main.json").read_bytes()
+
+    def interrupted(*_):
+        raise KeyboardInterrupt
+
+    monkeypatch.setattr(review, "_reestimated", interrupted)
+    assert run(["refit", str(case)]) == 3
+    assert (case / "results" / "main.json").read_bytes() == before
+    assert not (case / "lock").exists()
+
+
+def test_results_are_old_once_the_specification_changes_and_draft_re_estimates(case, specification, capsys):
+    path = case / "specification-main.toml"
+    path.write_text(SPECIFICATION.replace("shops.csv", "../shops.csv"))
+    run(["refit", str(case)])
+    path.write_text(path.read_text().replace("HC1", "HC3"))
+    capsys.readouterr()
+    run(["show", str(case)])
+    assert "older" in capsys.readouterr().out
+    run(["draft", str(case), "--as", "txt"])
+    assert "re-estimating" in capsys.readouterr().err
+    run(["show", str(case)])
+    assert "older" not in capsys.readouterr().out
+
+
 # --- percent ----------------------------------------------------------------------------------------------------------
 
 

@@ -6,6 +6,7 @@ import shutil
 import subprocess
 import sys
 import time
+from pathlib import Path
 
 import pytest
 
@@ -245,6 +246,25 @@ def test_a_broken_off_input_keeps_everything(folder):
     )
     assert done.returncode == 0
     assert len(casefolder.read_entries(casefolder.open_case(folder))) == 2
+
+
+@pytest.mark.skipif(not Path("/proc/self/stat").exists(), reason="needs process times")
+def test_the_first_question_comes_within_half_a_second(folder):
+    assert min(seconds_to_first_question(folder) for _ in range(4)) < 0.5
+
+
+def seconds_to_first_question(folder):
+    """Processor seconds, since the clock on the wall also counts what other programs do meanwhile."""
+    command = [sys.executable, "-m", "reviewkit", "interview", str(folder)]
+    run = subprocess.Popen(command, stdin=subprocess.PIPE, stdout=subprocess.PIPE, env=environment())
+    seen = b""
+    while b"\n> " not in seen:
+        part = run.stdout.read1(100)
+        assert part
+        seen += part
+    ticks = Path(f"/proc/{run.pid}/stat").read_text().rpartition(")")[2].split()[11:13]
+    run.communicate(b"q\n")
+    return sum(map(int, ticks)) / os.sysconf("SC_CLK_TCK")
 
 
 class Terminal:
