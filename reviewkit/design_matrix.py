@@ -19,6 +19,8 @@ Array = npt.NDArray[np.float64]
 Mask = npt.NDArray[np.bool_]
 
 CONSTANT = "(constant)"
+LARGEST = 1e100
+"""Size of a value beyond which its square could no longer be held."""
 MOST_LEVELS = 1000
 """Classes that factor() may have before it must be absorbed instead."""
 
@@ -172,6 +174,8 @@ def build_design(spec: Specification, frame: "pandas.DataFrame") -> Design:
     x = np.empty((rows, len(pieces)))
     for place, piece in enumerate(pieces):
         x[:, place] = piece.values(columns, rows)
+        if max(-x[:, place].min(), x[:, place].max()) > LARGEST:
+            raise NotEstimable(f"term `{piece.name}`", f"it has values beyond {LARGEST:.0e} in size", "smaller values")
     weights = columns[spec.weights.column] if spec.weights else None
     frequency = spec.weights is not None and spec.weights.kind is WeightKind.FREQUENCY
     return Design(

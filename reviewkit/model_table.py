@@ -11,6 +11,7 @@ from reviewkit.design_matrix import CONSTANT, Design, DesignColumn, Level, part_
 from reviewkit.estimators.covariance import Inference, infer
 from reviewkit.estimators.fit import Fit
 from reviewkit.expressions import Column
+from reviewkit.refusals import Refusal
 from reviewkit.specification import (
     ErrorKind,
     Errors,
@@ -197,9 +198,11 @@ _OTHER_CONVENTIONS = (
 
 def agreements(spec: Specification, table: ModelTable) -> tuple[Agreement, ...]:
     """How each printed term agrees with the refit, and under which other convention a printed error would."""
-    return tuple(
-        _agreement(name, printed, spec, table) for name, printed in spec.printed_terms if table.term(name) is not None
-    )
+    for name, _ in spec.printed_terms:
+        if table.term(name) is None:
+            names = ", ".join(row.name for row in table.terms[:12])
+            raise Refusal(f"printed.terms.{name}", "it is not among the model's terms", names, "Check its spelling")
+    return tuple(_agreement(name, printed, spec, table) for name, printed in spec.printed_terms)
 
 
 def _agreement(name: str, printed: PrintedTerm, spec: Specification, table: ModelTable) -> Agreement:
@@ -212,8 +215,6 @@ def _agreement(name: str, printed: PrintedTerm, spec: Specification, table: Mode
 
 
 def _met_under(printed: PrintedTerm, place: int, spec: Specification, table: ModelTable) -> str | None:
-    from reviewkit.refusals import Refusal
-
     by = spec.errors.by
     clustered = tuple(
         Errors(ErrorKind.CLUSTER, type_, by, factor)

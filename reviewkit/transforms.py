@@ -94,7 +94,7 @@ def _check_domain(outcome: Outcome, amount: Array) -> None:
     if bad.any():
         raise NotEstimable(
             f"outcome `{outcome.column}`",
-            f"{int(bad.sum()):,} of {bad.size:,} rows have no {outcome.transform}",
+            f"there is no {outcome.transform} of it in {int(bad.sum()):,} of {bad.size:,} rows",
             rule,
             'Say what the submission did with them: zeros = "dropped", "replaced", or another transform or constant',
         )

@@ -20,6 +20,8 @@ from reviewkit.wording import estimate
 Array = npt.NDArray[np.float64]
 
 MOST_BINS = 20
+PARTS = 5
+"""Classes in the table; the picture has more."""
 FEWEST_IN_BIN = 10
 """Rows that a bin has at least."""
 
@@ -27,16 +29,19 @@ FEWEST_IN_BIN = 10
 def baseline_exhibit(sample: Sample, design: Design, place: int, label: str) -> Exhibit:
     """Least squares on the outcome itself; `place` is the focal column, `label` names the outcome with its unit."""
     fit = fit_least_squares(sample)
-    residual_bins = binned(fit.mean, fit.residuals)
+    residual_bins = binned(fit.mean, fit.residuals, MOST_BINS)
     x_left, y_left = _added_variable(sample, design, place)
     slope = float(fit.coefficients[place])
-    added_bins = binned(x_left, y_left)
+    added_bins = binned(x_left, y_left, MOST_BINS)
     name = design.names[place]
     return Exhibit(
         "baseline-diagnostics",
         "Least squares on the untransformed outcome: residuals, and the focal term after the others",
-        ("picture", "middle of bin", "mean", "10 % point", "90 % point", "rows"),
-        (*_rows("residual against fitted", residual_bins), *_rows(f"added variable, {name}", added_bins)),
+        ("picture", "middle of part", "mean", "10 % point", "90 % point", "rows"),
+        (
+            *_rows("residual against fitted", binned(fit.mean, fit.residuals, PARTS)),
+            *_rows(f"added variable, {name}", binned(x_left, y_left, PARTS)),
+        ),
         _sentence(residual_bins, name, slope),
         (
             BinnedFigure(f"fitted {label}", f"residual of {label}", residual_bins, (0.0, 0.0)),
@@ -53,9 +58,9 @@ def _added_variable(sample: Sample, design: Design, place: int) -> tuple[Array, 
     return fit_least_squares(focal).residuals, fit_least_squares(rest).residuals
 
 
-def binned(x: Array, y: Array) -> tuple[Bin, ...]:
-    """Means and 10 to 90 % ranges of y in classes of x of about equal size; ties stay together."""
-    count = min(MOST_BINS, len(x) // FEWEST_IN_BIN)
+def binned(x: Array, y: Array, most: int) -> tuple[Bin, ...]:
+    """Means and 10 to 90 % ranges of y in at most `most` classes of x of about equal size; ties stay together."""
+    count = min(most, len(x) // FEWEST_IN_BIN)
     if count < 1:
         return ()
     edges = np.unique(np.quantile(x, np.linspace(0, 1, count + 1)[1:-1]))

@@ -17,11 +17,7 @@ SCALE_WORDS = {
     Scale.ELASTICITY: "elasticity of the mean",
     Scale.LEVEL: "difference of means in the outcome's unit",
 }
-COLUMNS = (
-    "term", "submission's side", "rows", "scale", "submitted", "submitted low", "submitted high", "alternative",
-    "alternative low", "alternative high", "difference", "difference low", "difference high", "conclusion",
-    "agree within percent", "differ by at least percent",
-)  # fmt: skip
+COLUMNS = ("term", "number", "value", "low", "high")
 
 
 def comparison_exhibit(comparisons: tuple[Comparison, ...], level: float) -> Exhibit:
@@ -31,28 +27,29 @@ def comparison_exhibit(comparisons: tuple[Comparison, ...], level: float) -> Exh
         "comparison",
         f"The two models on one scale, with {100 * level:.0f} % intervals",
         COLUMNS,
-        tuple(_row(each) for each in comparisons),
+        tuple(row for each in comparisons for row in _rows(each)),
         " ".join(comparison_sentence(each) for each in comparisons[:4]),
         tuple(_figure(scale, shown) for scale in dict.fromkeys(each.scale for each in shown if each.scale)),
     )
 
 
-def _row(each: Comparison) -> tuple[Cell, ...]:
-    return (
-        each.term,
-        "model taken at its word" if each.kind is Kind.MODEL else "coefficient as read",
-        "same rows" if each.rows == "common" else "each model's own rows",
-        SCALE_WORDS[each.scale] if each.scale else None,
-        each.submitted,
-        *(each.submitted_interval or (None, None)),
-        each.alternative,
-        *(each.alternative_interval or (None, None)),
-        each.difference,
-        *(each.interval or (None, None)),
-        each.conclusion or each.why,
-        each.agree_within_percent,
-        each.differ_by_at_least_percent,
+def _rows(each: Comparison) -> list[tuple[Cell, ...]]:
+    """The two numbers, their difference, and the two bounds, a line each."""
+    if each.submitted is None or each.scale is None:
+        return [(each.term, f"no comparison: {each.why}", None, None, None)]
+    side = "submitted" if each.kind is Kind.MODEL else "submitted coefficient as read"
+    own = "" if each.rows == "common" else ", each model's own rows"
+    scale = SCALE_WORDS[each.scale]
+    rows: list[tuple[Cell, ...]] = [
+        (each.term, f"{side}, {scale}{own}", each.submitted, *(each.submitted_interval or (None, None))),
+        (each.term, f"alternative, {scale}{own}", each.alternative, *(each.alternative_interval or (None, None))),
+        (each.term, "difference", each.difference, *(each.interval or (None, None))),
+    ]
+    bounds = (
+        ("percent within which they agree", each.agree_within_percent),
+        ("percent by which they differ at least", each.differ_by_at_least_percent),
     )
+    return [*rows, *((each.term, name, bound, None, None) for name, bound in bounds if bound is not None)]
 
 
 def _figure(scale: Scale, comparisons: tuple[Comparison, ...]) -> IntervalFigure:
@@ -75,9 +72,9 @@ def _figure(scale: Scale, comparisons: tuple[Comparison, ...]) -> IntervalFigure
 def comparison_sentence(each: Comparison) -> str:
     """What the numbers of one comparison say, with the bound; never that the two agree without it."""
     if each.submitted is None or each.alternative is None or each.scale is None:
-        return f"{each.term}: no comparison, since {each.why}."
+        return f"For {each.term}, no comparison, since {(each.why or 'there is none').rstrip('.')}."
     side = "the submitted model implies" if each.kind is Kind.MODEL else "the coefficient, as read, says"
-    told = f"{each.term}: {side} {_told(each, each.submitted, each.submitted_interval)}, "
+    told = f"For {each.term}, {side} {_told(each, each.submitted, each.submitted_interval)}, "
     told += f"the alternative {_told(each, each.alternative, each.alternative_interval)}"
     return f"{told}; {verdict_words(each)}."
 

@@ -60,15 +60,16 @@ def _table(to: Console, found: Reestimation, focus: tuple[str, ...], plain: bool
     names = [*focus, *(row.name for row in found.submitted.terms if row.name not in focus)][:MOST_TERMS]
     shown = Table(box=None if plain else SIMPLE_HEAD, pad_edge=False, show_edge=False)
     shown.add_column("term")
-    for column in ("submitted", "95 % interval", "alternative (Poisson)", "95 % interval"):
-        if found.alternative or "alternative" not in column:
-            shown.add_column(column, justify="right")
+    models = ("submitted", "alternative (Poisson)") if found.alternative else ("submitted",)
+    for model in models:
+        shown.add_column(model, justify="right")
+        shown.add_column("95 % interval", justify="right")
     for name in names:
         cells = _cells(found.submitted, name) + (_cells(found.alternative, name) if found.alternative else [])
         marked = Text(
             ("» " if name in focus else "  ") + clean(name), style="" if plain or name not in focus else "bold"
         )
-        shown.add_row(marked, *(Text(cell) for cell in cells[: len(shown.columns) - 1]))
+        shown.add_row(marked, *(Text(cell) for cell in cells))
     to.print(shown)
     hidden = len(found.submitted.terms) - len(names)
     if hidden > 0:
