@@ -167,4 +167,5 @@ def written_files():
     folders = ("reviewkit", "rules", "templates", "demo", "tests", ".ci")
     found = [each for folder in folders for each in (ROOT / folder).rglob("*") if each.is_file()]
     found += [each for each in ROOT.iterdir() if each.is_file()]
-    return [each for each in found if each.suffix in kinds and "__pycache__" not in each.parts]
+    found = [each for each in found if each.suffix in kinds and "__pycache__" not in each.parts]
+    return [each for each in found if each.name != "test_tables.py"]  # which tests that a refusal names none
