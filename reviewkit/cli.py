@@ -2,7 +2,6 @@
 
 import os
 import sys
-from contextlib import contextmanager, suppress
 from enum import StrEnum
 from pathlib import Path
 from typing import TYPE_CHECKING, Annotated, Any
@@ -12,11 +11,8 @@ import typer
 from reviewkit.refusals import Refusal
 
 if TYPE_CHECKING:
-    from collections.abc import Callable, Iterator
-
     from reviewkit.review import Review
     from reviewkit.rules import Finding
-    from reviewkit.screen import Screen
 
 FAILED = 3
 INTERRUPTED = 130
@@ -58,7 +54,7 @@ def begin(
     plain: Plain = False,
 ) -> None:
     """Make the case folder and read what it is given."""
-    from reviewkit import review
+    from reviewkit import review, terminal
     from reviewkit.casefolder import Input
 
     given = {Input.MANUSCRIPT: manuscript, Input.PACKAGE: package, Input.DATA: data}
@@ -68,7 +64,7 @@ def begin(
     if sys.stdin.isatty() and not as_json:
         from reviewkit.interview_screen import ask_policy
 
-        folder = ask_policy(folder, _screen(plain, as_json))
+        folder = ask_policy(folder, terminal.screen(plain, as_json))
     folder, said = review.read_inputs(folder)
     if as_json:
         _give({"format": 1, "case": case.name, "said": list(said), "warnings": list(warnings)})
@@ -90,7 +86,7 @@ def interview(
     plain: Plain = False,
 ) -> None:
     """Ask what can still change a point; also builds the specification."""
-    from reviewkit import casefolder, interview_screen, review, unattended
+    from reviewkit import casefolder, interview_screen, review, terminal, unattended
 
     folder, book = casefolder.open_case(case), None
     with casefolder.working_in(folder):
@@ -98,7 +94,7 @@ def interview(
             count = unattended.take_answers(folder, answers)
             _aside(f"{count} answers taken from {answers.name}.")
         else:
-            screen = _screen(plain, as_json)
+            screen = terminal.screen(plain, as_json)
             interview_screen.refresh(folder, screen)
             folder, asked = review.open_interview(case, minutes is not None, tuple(again or ()))
             interview_screen.closing(interview_screen.hold(folder, asked, screen), screen)
@@ -115,13 +111,13 @@ def show(
     alert_on: Alert = AlertOn.NEVER,
 ) -> None:
     """Say what is known, what disagrees, which points there are, what is open, and what comes next."""
-    from reviewkit import overview, review
+    from reviewkit import overview, review, terminal
 
     looked = review.look(case)
     if as_json:
         _give(overview.overview_json(looked))
     else:
-        screen = _screen(plain, as_json)
+        screen = terminal.screen(plain, as_json)
         for part in overview.overview(looked, every):
             screen.strong(part.heading)
             for line in part.lines:
@@ -139,17 +135,17 @@ def refit(
     alert_on: Alert = AlertOn.NEVER,
 ) -> None:
     """Re-estimate the submitted model and its quasi-ML alternative."""
-    from reviewkit import casefolder, review
+    from reviewkit import casefolder, review, terminal
 
     if case_or_spec.suffix == ".toml" and not case_or_spec.is_dir():
-        with _progress(plain) as progress:
+        with terminal.progress(plain) as progress:
             estimated = review.reestimate_file(case_or_spec, progress)
         findings = review.findings_of(estimated)
         _show_refit(estimated, findings, as_json, plain)
         _alert(findings, alert_on)
         return
     folder = casefolder.open_case(case_or_spec)
-    with casefolder.working_in(folder), _progress(plain) as progress:
+    with casefolder.working_in(folder), terminal.progress(plain) as progress:
         estimated = review.refit(folder, model, progress)
     looked = review.look(case_or_spec)
     _show_refit(estimated, looked.findings, as_json, plain)
@@ -168,12 +164,12 @@ def draft(
     alert_on: Alert = AlertOn.NEVER,
 ) -> None:
     """Write the notes to authors and to editor, never joined."""
-    from reviewkit import casefolder, drafting, review
+    from reviewkit import casefolder, drafting, review, terminal
 
     looked = review.look(case)
     if review.needs_refit(looked):
         _aside("Specification or data are newer than the results; re-estimating first.")
-        with casefolder.working_in(looked.case), _progress(plain) as progress:
+        with casefolder.working_in(looked.case), terminal.progress(plain) as progress:
             review.refit(looked.case, progress=progress)
     written = drafting.draft(case, tuple(each.strip() for each in formats.split(",") if each.strip()), request)
     if as_json:
@@ -284,9 +280,10 @@ def _show_refit(estimated: Any, findings: "tuple[Finding, ...]", as_json: bool, 
 
         _give(refit_object([estimated], findings))
         return
+    from reviewkit import terminal
     from reviewkit.writers.refit_terminal import show_refit
 
-    show_refit(estimated, plain=_is_plain(plain))
+    show_refit(estimated, plain=terminal.is_plain(plain))
 
 
 def _give(content: Any) -> None:
@@ -297,50 +294,6 @@ def _give(content: Any) -> None:
 
 def _aside(text: str) -> None:
     print(text, file=sys.stderr)
-
-
-@contextmanager
-def _progress(plain: bool) -> "Iterator[Callable[[str], None]]":
-    """Says what is being done: one line that changes on a terminal, elsewhere a line every few seconds."""
-    from reviewkit.screen import now_and_then
-
-    if _is_plain(plain, sys.stderr):
-        yield now_and_then(_aside)
-        return
-    try:
-        yield lambda text: print(f"\r\033[K{text} …", end="", file=sys.stderr, flush=True)
-    finally:
-        print("\r\033[K", end="", file=sys.stderr, flush=True)
-
-
-def _is_plain(plain: bool, stream: Any = None) -> bool:
-    """Whether nothing but lines of text may be written."""
-    unstyled = "NO_COLOR" in os.environ or os.environ.get("TERM", "") == "dumb"
-    return plain or unstyled or not (stream or sys.stdout).isatty()
-
-
-def _screen(plain: bool, as_json: bool) -> "Screen":
-    import shutil
-
-    from reviewkit.screen import Screen
-
-    out = sys.stderr if as_json else sys.stdout
-
-    def write(text: str) -> None:
-        print(text, file=out, flush=True)
-
-    def read(prompt: str) -> str:
-        if sys.stdin.isatty() and out.isatty():
-            with suppress(ImportError):
-                import readline  # noqa: F401 – gives `input` its line editing where there is one
-            return input(prompt)
-        print(prompt, end="", file=out, flush=True)
-        line = sys.stdin.readline()
-        if not line:
-            raise EOFError
-        return line
-
-    return Screen(read, write, shutil.get_terminal_size((80, 24)).columns, not _is_plain(plain, out))
 
 
 def _shown(path: Path) -> str:

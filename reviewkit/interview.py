@@ -13,7 +13,7 @@ from reviewkit.records import Json
 from reviewkit.rules import Importance, Rule, RuleBook, State
 from reviewkit.specifying import DataColumn, Specifying, next_step
 from reviewkit.vocabulary import FactDefinition, Kind
-from reviewkit.wording import share, text
+from reviewkit.wording import percent, share, text
 
 CONFIRM = "confirm"
 """Name of the prompt that shows many machine readings at once."""
@@ -121,6 +121,8 @@ def shown_value(definition: FactDefinition | None, value: Value) -> str:
         return "none"
     if definition is not None and definition.unit == "share" and isinstance(value, float):
         return share(value)
+    if definition is not None and definition.unit == "percent" and isinstance(value, float):
+        return percent(value)
     return text(value)
 
 
