@@ -21,6 +21,7 @@ MISSING = ("", "NA", "NaN", "nan", ".")
 _MISSING_AMONG_NUMBERS = re.compile(r"^(?:|\.[a-z]?|NA|N/A|n/a|#N/A|NULL|null|None|nan|NaN|-nan|<NA>|-)$")
 _TRUTHS = {"TRUE": 1.0, "True": 1.0, "true": 1.0, "FALSE": 0.0, "False": 0.0, "false": 0.0}
 _SAMPLE_ROWS = 60
+_CONTROLS = bytes((*range(1, 9), *range(14, 32)))
 
 _POINT = re.compile(r"^[+-]?(?:\d+(?:\.\d*)?|\.\d+)(?:[eE][+-]?\d+)?$")
 _COMMA = re.compile(r"^[+-]?(?:\d*|\d{1,3}(?:\.\d{3})+),\d+(?:[eE][+-]?\d+)?$")
@@ -63,8 +64,7 @@ def _decoded(data: bytes, name: str) -> tuple[str, str]:
         except UnicodeDecodeError:
             continue
         break
-    controls = sum(text.count(chr(code)) for code in (*range(1, 9), *range(14, 32)))
-    if controls > len(text) / 1000:
+    if len(data) - len(data.translate(None, _CONTROLS)) > len(data) / 1000:
         raise Refusal(
             name, "the file is not plain text", "a table in plain text", "Save the table as .csv in UTF-8 and try again"
         )
@@ -87,12 +87,14 @@ def _fit(text: str, separator: str) -> tuple[bool, float, int]:
 
 
 def _sampled(text: str, separator: str) -> list[list[str]]:
-    lines = io.StringIO(text, newline="")
-    reader = csv.reader(lines, delimiter=separator)
+    beginning = text[: 2 * LONGEST_LINE]
+    reader = csv.reader(io.StringIO(beginning, newline=""), delimiter=separator)
     try:
-        return list(islice((row for row in reader if row), _SAMPLE_ROWS))
+        rows = list(islice((row for row in reader if row), _SAMPLE_ROWS))
     except csv.Error:
         return []
+    cut_short = len(beginning) < len(text) and 1 < len(rows) < _SAMPLE_ROWS
+    return rows[:-1] if cut_short else rows
 
 
 def _header(text: str, separator: str, name: str) -> list[str]:
