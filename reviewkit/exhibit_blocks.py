@@ -1,6 +1,7 @@
 """An exhibit as blocks of a note: its table in finished texts, its figures with alternative texts."""
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
+from dataclasses import replace
 from typing import assert_never
 
 from reviewkit.exhibit import BarFigure, BinnedFigure, Cell, Exhibit, FigureData, Interval, IntervalFigure
@@ -23,20 +24,44 @@ NO_VALUE = "–"
 
 _ERROR_COLUMNS = ("std_error", "standard error", "error")
 _MOST_ROWS_IN_WORDS = 12
+_MOST_ROWS = 24  # beyond, the figure alone is shown
+_MOST_COLUMNS = 8  # beyond, rows and columns change places
 
 
 def exhibit_blocks(exhibit: Exhibit, place: int) -> tuple[Table | Figure, ...]:
     """The blocks of the exhibit that is number `place` of its note."""
-    table = exhibit_table(exhibit, f"Exhibit {place}. ")
     figures = tuple(_figure(figure, exhibit, place) for figure in exhibit.figures)
-    return (table, *figures) if table.rows else figures
+    if not exhibit.rows:
+        return figures
+    if figures and len(exhibit.rows) > _MOST_ROWS:
+        read = replace(figures[0], caption=f"{figures[0].caption} {_ended(exhibit.sentence)}")
+        return (read, *figures[1:])
+    return (exhibit_table(exhibit, f"Exhibit {place}. "), *figures)
 
 
 def exhibit_table(exhibit: Exhibit, prefix: str = "") -> Table:
     """The exhibit's table with every cell as text; `prefix` goes before the caption."""
     rows = tuple(_row(exhibit.columns, row) for row in exhibit.rows)
     columns = tuple(_heading(name) for name in exhibit.columns)
-    return Table(sentence(prefix + clean(exhibit.title)), columns, rows, sentence(clean(exhibit.sentence)))
+    if len(columns) > _MOST_COLUMNS >= len(rows):
+        columns, rows = _turned(columns, rows)
+    return Table(sentence(prefix + clean(exhibit.title)), columns, rows, _ended(exhibit.sentence))
+
+
+def _turned(
+    columns: tuple[str, ...], rows: tuple[tuple[str, ...], ...]
+) -> tuple[tuple[str, ...], tuple[tuple[str, ...], ...]]:
+    """Rows as columns, for few rows of many cells; rows that begin alike are told apart by their second cell."""
+    labels = 1 if len({row[0] for row in rows}) == len(rows) else 2
+    heads = tuple(": ".join(row[:labels]) for row in rows)
+    turned = tuple((column, *cells) for column, *cells in zip(columns, *rows, strict=True))
+    return (" ", *heads), turned[labels:]
+
+
+def _ended(words: str) -> str:
+    """The words with a full stop; they may begin with the name of a column, which keeps its letters."""
+    tidy = clean(words).strip()
+    return tidy if not tidy or tidy[-1] in ".?!" else f"{tidy}."
 
 
 def alt_text(figure: FigureData, title: str) -> str:
@@ -58,9 +83,15 @@ def alt_text(figure: FigureData, title: str) -> str:
 
 
 def _row(columns: Sequence[str], row: Sequence[Cell]) -> tuple[str, ...]:
-    errors = [cell for name, cell in zip(columns, row, strict=True) if name.lower() in _ERROR_COLUMNS]
-    error = errors[0] if len(errors) == 1 and isinstance(errors[0], float) and errors[0] > 0 else None
-    return tuple(_cell(name, cell, error) for name, cell in zip(columns, row, strict=True))
+    cells = {name.lower(): cell for name, cell in zip(columns, row, strict=True)}
+    return tuple(_cell(name, cell, _error_beside(name.lower(), cells)) for name, cell in zip(columns, row, strict=True))
+
+
+def _error_beside(name: str, cells: Mapping[str, Cell]) -> float | None:
+    """The standard error that belongs to a column: its own, its namesake's, or the row's only one."""
+    own = name if name.endswith(" error") else f"{name} error"
+    found = [cells[each] for each in (own, *_ERROR_COLUMNS) if each in cells]
+    return found[0] if found and isinstance(found[0], float) and found[0] > 0 else None
 
 
 def _cell(column: str, cell: Cell, error: float | None) -> str:
@@ -94,7 +125,8 @@ def _heading(column: str) -> str:
 
 
 def _figure(figure: FigureData, exhibit: Exhibit, place: int) -> Figure:
-    return Figure(sentence(f"Exhibit {place}, drawn: {clean(exhibit.title)}"), alt_text(figure, exhibit.title), figure)
+    shown = f"{figure.y_label} against {figure.x_label}" if isinstance(figure, BinnedFigure) else exhibit.title
+    return Figure(_ended(f"Exhibit {place}, drawn: {clean(shown)}"), alt_text(figure, exhibit.title), figure)
 
 
 def _intervals_in_words(figure: IntervalFigure) -> str:

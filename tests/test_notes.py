@@ -150,7 +150,7 @@ def test_the_order_of_findings_does_not_change_the_note():
 
 def test_the_case_for_the_authors_stands_before_the_numbers_against_it():
     note = compose(case_with(), Audience.AUTHORS)
-    told = next(each for each in note.sections if "which average" in each.title)
+    told = next(each for each in note.sections if "both estimates side by side" in each.title)
     leads = [block.lead for block in told.blocks if isinstance(block, Paragraph)]
     assert leads.index("In favour of this choice.") < leads.index("From the numbers.")
 

@@ -138,11 +138,17 @@ def _quiet(case: CaseContent, phrases: Phrases, most: int) -> tuple[Block, ...]:
 def _open(case: CaseContent, phrases: Phrases) -> tuple[Block, ...]:
     """Every missing fact in words, those that only data can show together."""
     names = dict.fromkeys(name for finding in _in_state(case, State.OPEN) for name in finding.missing)
-    labels = [_label(case, name) for name in names if not is_private(name)]
-    asked = [label for label in labels if not label.endswith(_NEEDS_DATA)]
-    by_data = [label.removesuffix(_NEEDS_DATA) for label in labels if label.endswith(_NEEDS_DATA)]
+    open_to_all = [name for name in names if not is_private(name)]
+    asked = [_label(case, name) for name in open_to_all if not _from_data(case, name)]
+    by_data = [_label(case, name).removesuffix(_NEEDS_DATA) for name in open_to_all if _from_data(case, name)]
     lines = [*asked, *([phrases.say("open.data", labels=joined(by_data))] if by_data else [])]
     return (Paragraph(f"{phrases.say('open.lead')} {'; '.join(lines)}."),) if lines else ()
+
+
+def _from_data(case: CaseContent, name: str) -> bool:
+    """Whether the fact is never asked for, but comes from a re-estimation."""
+    definition = case.book.vocabulary.get(name)
+    return definition is not None and not definition.asked
 
 
 def _label(case: CaseContent, name: str) -> str:
@@ -163,7 +169,8 @@ def _repeat(case: CaseContent, phrases: Phrases) -> tuple[Block, ...]:
     for each in case.repeats:
         lines.append(phrases.say("repeat.data", model=each.model, name=clean(each.data_name), sha256=each.sha256))
         lookup = case.book.lookup(case.facts, f"model:{each.model}")
-        errors = joined((_errors(lookup("errors.kind"), phrases), _errors(lookup("errors.type"), phrases)), ",")
+        known = [_errors(lookup(name), phrases) for name in ("errors.kind", "errors.type")]
+        errors = ", ".join(filter(None, known))
         lines += [phrases.say("repeat.errors", model=each.model, errors=errors)] if errors else []
     shown = [Excerpt(each.specification, phrases.say("repeat.place", model=each.model)) for each in case.repeats]
     return (Paragraph(" ".join(lines)), *shown)

@@ -75,21 +75,27 @@ def _point(case: CaseContent, findings: list[Finding]) -> Point:
     return Point(told, others, _exhibits_of(case, told))
 
 
-def _rank(case: CaseContent, point: Point) -> tuple[int, bool, bool]:
-    """The referee's order, then major before minor, then points with evidence from the data."""
+def _rank(case: CaseContent, point: Point) -> tuple[int, bool, bool, bool]:
+    """The referee's order, then major before minor, then what the data show, then points with any exhibit."""
     order = case.wishes.order
     wished = order.index(point.rule.name) if point.rule.name in order else len(order)
-    return wished, point.finding.importance is not Importance.MAJOR, not point.exhibits
+    shows_numbers = point.rule.topic == _ABOUT_NUMBERS and bool(point.exhibits)
+    return wished, point.finding.importance is not Importance.MAJOR, not shows_numbers, not point.exhibits
 
 
 def _exhibits_of(case: CaseContent, finding: Finding) -> tuple[int, ...]:
     """Numbers of the exhibits that yielded facts which the point's conditions or texts name."""
     names = {name for condition in finding.rule.conditions for name in condition.names}
     names |= {name for words in (finding.rule.says, finding.rule.why) for name in placeholders(words)}
-    known = [fact for name in sorted(names) if (fact := case.facts.known(name, finding.subject)) is not None]
-    return tuple(
-        place for place, exhibit in enumerate(case.exhibits, 1) if any(fact in exhibit.facts for fact in known)
-    )
+    shown = {place for name in names for place in _shown_in(case, name, finding.subject)}
+    return tuple(place for place, exhibit in enumerate(case.exhibits, 1) if exhibit.name in shown)
+
+
+def _shown_in(case: CaseContent, name: str, subject: str) -> list[str]:
+    """Names of the exhibits that show the fact as the note tells it."""
+    known = case.facts.known(name, subject)
+    told = [fact for fact in case.facts.every(name, subject) if known is not None and fact.value == known.value]
+    return [fact.source.place for fact in told if fact.source.kind is SourceKind.EXHIBIT]
 
 
 # --- a point in full, and in a line -----------------------------------------------------------------------------

@@ -11,6 +11,7 @@ from reviewkit.safekeeping import write_atomically
 from reviewkit.wording import clean
 from reviewkit.writers.docx_styles import Looks, looks, prepare
 from reviewkit.writers.pictures import FULL_CM, draw
+from reviewkit.writers.table_widths import column_widths
 
 if TYPE_CHECKING:
     from docx.document import Document
@@ -20,7 +21,7 @@ if TYPE_CHECKING:
 
 _EPOCH = (1980, 1, 1, 0, 0, 0)
 _NUMERIC = re.compile(r"^[<>(]?\s*[-+−]?[\d,.]+(e-?\d+)?\)?$")
-_WIDEST_CELL, _NARROWEST_CELL = 34, 6  # in characters, when widths are shared out
+_CM_A_CHARACTER = 0.2  # of the table's text, on average with its padding
 
 
 def write_docx(note: Note, path: Path) -> None:
@@ -126,11 +127,8 @@ def _share_widths(table: "DocxTable", block: Table, width_cm: float) -> None:
     """Columns as wide as their texts ask for, within bounds, the whole table no wider than the text."""
     from docx.shared import Cm
 
-    needs = [
-        min(max(_NARROWEST_CELL, *(len(row[at]) + 2 for row in (block.columns, *block.rows))), _WIDEST_CELL)
-        for at in range(len(block.columns))
-    ]
-    unit = min(width_cm / sum(needs), 0.22)  # a character of 9 points is at most about 0.22 cm wide
+    needs = column_widths((block.columns, *block.rows), int(width_cm / _CM_A_CHARACTER), padding=3)
+    unit = min(width_cm / sum(needs), _CM_A_CHARACTER)
     for column, need in zip(table.columns, needs, strict=True):
         for cell in (column, *column.cells):
             cell.width = Cm(need * unit)

@@ -10,6 +10,7 @@ from typing import assert_never
 from reviewkit.note import Block, Excerpt, Figure, Note, Paragraph, Points, ReferenceList, Section, Table
 from reviewkit.safekeeping import write_atomically
 from reviewkit.wording import clean
+from reviewkit.writers.table_widths import column_widths
 
 WIDTH = 78
 _GAP = 2
@@ -71,21 +72,13 @@ def _wrap(words: str, first: str = "", later: str = "") -> list[str]:
 
 def _table(table: Table) -> str:
     grid = [[clean(cell) for cell in row] for row in (table.columns, *table.rows)]
-    widths = _widths(grid)
+    widths = column_widths(grid, WIDTH - _GAP * (len(grid[0]) - 1))
     right = [_is_numeric([row[at] for row in grid[1:]]) for at in range(len(widths))]
     lines = [_lines(row, widths, right) for row in grid]
     rule = "-" * min(sum(widths) + _GAP * (len(widths) - 1), WIDTH)
     body = "\n".join([*lines[0], rule, *(line for row in lines[1:] for line in row)])
     note = ["", *_wrap(table.note)] if table.note else []
     return "\n".join([*_wrap(table.caption), "", body, *note])
-
-
-def _widths(grid: Sequence[Sequence[str]]) -> list[int]:
-    """Natural widths, the widest column narrowed until all fit."""
-    widths = [max(map(_wide, column)) or 1 for column in zip(*grid, strict=True)]
-    while sum(widths) + _GAP * (len(widths) - 1) > WIDTH and max(widths) > 1:
-        widths[widths.index(max(widths))] -= 1
-    return widths
 
 
 def _lines(row: Sequence[str], widths: Sequence[int], right: Sequence[bool]) -> list[str]:
