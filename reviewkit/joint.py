@@ -5,15 +5,17 @@ one minus the leverage carry the error; where few rows carry it, a symmetric boo
 """
 
 from collections.abc import Callable, Mapping
+from contextlib import suppress
 from dataclasses import dataclass, replace
 
 import numpy as np
 import numpy.typing as npt
-from scipy import stats
+from scipy.special import stdtrit
 
 from reviewkit.estimators.fit import Codes, Fit, Sample, cluster_sums, pull
 from reviewkit.estimators.least_squares import fit_least_squares
 from reviewkit.estimators.poisson import fit_poisson
+from reviewkit.estimators.resampling import coefficient_draws
 from reviewkit.implied import Contrast, MeanModel, coefficient_influence, effect, effect_influence
 from reviewkit.refusals import NotEstimable
 
@@ -26,7 +28,7 @@ FEW_ROWS = 20.0
 VERY_FEW_ROWS = 10.0
 """Effective rows under which a conclusion is marked weak."""
 DRAWS = 999
-_BLOCK_CELLS = 4_000_000  # of a rows × clusters matrix held at once
+_BLOCK_CELLS = 32_000  # of a matrix with a column a row held at once, so that it stays in cache
 _SETTLED = 1e-10
 
 FITTERS: Mapping[str, Callable[[Sample, Array | None], Fit]] = {"ols": fit_least_squares, "poisson": fit_poisson}
@@ -92,11 +94,11 @@ class Joint:
     def critical(self, ratio: float, level: float) -> float:
         """The two-sided critical value of contrast(ratio) at `level`, such as 0.95."""
         if self.draws is None:
-            return float(stats.t.ppf(0.5 + level / 2, self.df))
+            return float(stdtrit(self.df, 0.5 + level / 2))
         s, a, v_s, v_a, c = self.draws.T
         error = np.sqrt(np.maximum(v_a - 2 * ratio * c + ratio**2 * v_s, 0))
         gap = np.abs((a - ratio * s) - (self.alternative - ratio * self.submitted))
-        return float(np.quantile(gap[error > 0] / error[error > 0], level))
+        return float(np.quantile(gap[error > 0] / error[error > 0], level, method="higher"))
 
     def interval_of(self, which: int, level: float) -> tuple[float, float]:
         """The interval of the submitted (0) or the alternative (1) number."""
@@ -110,7 +112,7 @@ class Joint:
         centre = (self.submitted, self.alternative)[which]
         error = np.sqrt(self.draws[:, 2 + which])
         gaps = np.abs(self.draws[:, which] - centre)[error > 0] / error[error > 0]
-        return float(np.quantile(gaps, level))
+        return float(np.quantile(gaps, level, method="higher"))
 
 
 def estimate_joint(submitted: Side, alternative: Side, rows: int, seed: int, progress: Progress | None = None) -> Joint:
@@ -140,32 +142,62 @@ def _by_rows(submitted: Side, alternative: Side, rows: int, seed: int, progress:
     joint = Joint(numbers[0], numbers[1], covariance, df, "robust", effective)
     if effective >= FEW_ROWS:
         return joint
-    draws, failed = _bootstrap(submitted, alternative, rows, seed, progress)
+    draws, failed = _bootstrap((submitted, alternative), multiplicity, seed, progress)
     return replace(joint, method="bootstrap-t", draws=draws, failed_draws=failed)
 
 
 def _bootstrap(
-    submitted: Side, alternative: Side, rows: int, seed: int, progress: Progress | None
+    sides: tuple[Side, Side], multiplicity: Array, seed: int, progress: Progress | None
 ) -> tuple[Array, int]:
-    """Both numbers and their covariance in resamples of rows; a draw that cannot be fitted is counted and left out."""
+    """Both numbers and their covariance in resamples of observations; a draw that cannot be fitted is left out."""
     random = np.random.default_rng(seed)
-    draws, failed = [], 0
-    for number in range(DRAWS):
-        counts = random.multinomial(rows, np.full(rows, 1 / rows)).astype(float)
-        try:
-            draws.append(_draw(submitted, alternative, counts))
-        except (NotEstimable, np.linalg.LinAlgError):
-            failed += 1
-        if progress and number % 50 == 0:
-            progress(f"resampling rows, {number:,} of {DRAWS:,}")
-    if len(draws) < DRAWS / 2:
+    owner = np.repeat(np.arange(multiplicity.size), multiplicity.astype(int))
+    width = max(1, min(DRAWS, _BLOCK_CELLS // multiplicity.size))
+    blocks: list[Array] = []
+    for start in range(0, DRAWS, width):
+        if progress:
+            progress(f"resampling rows, {start:,} of {DRAWS:,}")
+        counts = _counts(random, owner, (min(width, DRAWS - start), multiplicity.size))
+        blocks.append(_draws(sides, counts))
+    draws = np.concatenate(blocks)
+    usable = np.isfinite(draws).all(axis=1)
+    failed = int(DRAWS - usable.sum())
+    if failed > DRAWS / 2:
         raise NotEstimable("bootstrap", f"{failed:,} of {DRAWS:,} resamples could not be fitted")
-    return np.array(draws), failed
+    return draws[usable], failed
 
 
-def _draw(submitted: Side, alternative: Side, counts: Array) -> tuple[float, ...]:
+def _counts(random: np.random.Generator, owner: Codes, shape: tuple[int, int]) -> Array:
+    """How often each row is drawn when observations are drawn with replacement, (resamples, rows)."""
+    resamples, rows = shape
+    drawn = owner[random.integers(owner.size, size=(resamples, owner.size))]
+    drawn += np.arange(0, resamples * rows, rows)[:, None]
+    return np.bincount(drawn.ravel(), minlength=resamples * rows).reshape(shape).astype(float)
+
+
+def _draws(sides: tuple[Side, Side], counts: Array) -> Array:
+    """Five numbers for each resample (B, rows): coefficients all at once; what that leaves, and effects, one by one."""
+    draws = np.full((len(counts), 5), np.nan)
+    if all(side.place is not None for side in sides):
+        draws = _coefficient_draws(sides, counts)
+    for number in np.flatnonzero(~np.isfinite(draws).all(axis=1)):
+        with suppress(NotEstimable, np.linalg.LinAlgError):
+            draws[number] = _draw(sides, counts[number])
+    return draws
+
+
+def _coefficient_draws(sides: tuple[Side, Side], counts: Array) -> Array:
+    numbers, psi = np.empty((2, len(counts))), np.zeros((2, *counts.shape))
+    for which, side in enumerate(sides):
+        assert side.place is not None  # noqa: S101
+        numbers[which], psi[which][:, side.rows] = coefficient_draws(side.fit, side.place, counts[:, side.rows])
+    pairs = ((0, 0), (1, 1), (0, 1))
+    return np.array([*numbers, *(np.einsum("bi,bi,bi->b", counts, psi[p], psi[q]) for p, q in pairs)]).T
+
+
+def _draw(sides: tuple[Side, Side], counts: Array) -> tuple[float, ...]:
     numbers, psi = [], np.zeros((2, counts.size))
-    for which, side in enumerate((submitted, alternative)):
+    for which, side in enumerate(sides):
         again = _resampled(side, counts[side.rows])
         value, influences = again.influence(jackknifed=True)
         numbers.append(value)
@@ -183,7 +215,7 @@ def _resampled(side: Side, counts: Array) -> Side:
         basis=replace(old.basis, z=old.basis.z[kept]),
         y=old.y[kept],
         weights=old.weights[kept],
-        multiplicity=(old.multiplicity * counts)[kept],
+        multiplicity=counts[kept],
         offset=old.offset[kept],
         clusters=None,
     )
@@ -263,21 +295,20 @@ def _cluster_grams(fit: Fit, codes: Codes, groups: int) -> tuple[Array, Array]:
 
 def _settle_without(fit: Fit, codes: Codes, on_basis: Array, left: Array) -> Array:
     z, sample = fit.sample.basis.z, fit.sample
-    weights = (sample.weights * sample.multiplicity)[:, None]
-    width = max(1, _BLOCK_CELLS // len(z))
-    for start in range(0, len(on_basis), width):
-        block = slice(start, min(start + width, len(on_basis)))
-        without = weights * (codes[:, None] != np.arange(block.start, block.stop)[None, :])
-        for _ in range(50):
-            mean = np.exp(z @ on_basis[block].T + sample.offset[:, None])
-            score = (without * (sample.y[:, None] - mean)).T @ z
-            step = np.linalg.solve(left[block], score[:, :, None])[:, :, 0]
-            on_basis[block] += step
-            if np.abs(step).max() < _SETTLED:
-                break
-        else:
-            raise NotEstimable("leaving out a cluster", "the estimate without some cluster does not come to rest")
-    return on_basis
+    weighted = (sample.weights * sample.multiplicity)[:, None] * z
+    groups, width = len(on_basis), max(1, _BLOCK_CELLS // len(z))
+    seen = weighted.T @ sample.y - cluster_sums(weighted * sample.y[:, None], codes, groups)
+    for _ in range(50):
+        own = np.exp(np.einsum("ij,ij->i", z, on_basis[codes]) + sample.offset)
+        score = seen + cluster_sums(weighted * own[:, None], codes, groups)
+        for start in range(0, groups, width):
+            block = slice(start, start + width)
+            score[block] -= np.exp(on_basis[block] @ z.T + sample.offset) @ weighted
+        step = np.linalg.solve(left, score[:, :, None])[:, :, 0]
+        on_basis = on_basis + step
+        if np.abs(step).max() < _SETTLED:
+            return on_basis
+    raise NotEstimable("leaving out a cluster", "the estimate without some cluster does not come to rest")
 
 
 def effective_clusters(fit: Fit, codes: Codes, groups: int, place: int) -> float:

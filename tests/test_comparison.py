@@ -10,15 +10,17 @@ import statsmodels.api as sm
 from hypothesis import given, settings
 from hypothesis import strategies as st
 from scipy import stats
+from specifying import amounts, refit, specification, table
 
 from reviewkit.comparison import Cautions, Comparison, Kind, Verdict, agrees, compare, differs
 from reviewkit.design_matrix import build_design
 from reviewkit.estimators.basis import well_conditioned
+from reviewkit.fitting import fit_model, submission_rows
 from reviewkit.implied import contrast, effect, effect_influence, exponential_mean, resolve_focus, smeared_mean
-from reviewkit.joint import FITTERS, Joint
+from reviewkit.joint import FITTERS, Joint, Side, _coefficient_draws, _counts, _draw
 from reviewkit.reestimation import make_sample
+from reviewkit.specification import Estimator
 from reviewkit.transforms import transformed
-from specifying import amounts, refit, specification, table
 
 ROBUST = {"kind": "robust"}
 CLUSTERED = {"kind": "cluster", "by": ["cluster"]}
@@ -329,3 +331,50 @@ def test_few_effective_rows_bring_in_the_bootstrap() -> None:
     assert first.weak is not None
     again = refit(data, outcome={"column": "y", "transform": "log"}, model={"terms": ["group"]}, errors=ROBUST)
     assert again.comparison[0] == first
+
+
+def two_sides(data: Any, **model: Any) -> tuple[Side, Side]:
+    """Both models of log y with zeros dropped: the submission stands on fewer rows than the alternative."""
+    tables = {"outcome": {"column": "y", "transform": "log", "zeros": "dropped"}, "model": model}
+    spec = specification(**tables, errors=ROBUST)
+    design = build_design(spec, data.frame)
+    made = (
+        fit_model(spec, Estimator.OLS, design, submission_rows(spec, design)),
+        fit_model(spec, Estimator.POISSON, design, np.ones(design.rows, dtype=bool)),
+    )
+    return tuple(Side(each.fit, each.rows, None, 1) for each in made)  # type: ignore[return-value]
+
+
+@pytest.mark.parametrize("weights", [{}, {"weights": {"column": "w", "kind": "probability"}}])
+def test_resamples_fitted_together_are_those_fitted_one_by_one(weights: Any) -> None:
+    sides = two_sides(amounts(rows=120), terms=["treated", "log(size)", "factor(region)"], **weights)
+    random = np.random.default_rng(3)
+    counts = _counts(random, np.arange(120), (60, 120))
+    together = _coefficient_draws(sides, counts)
+    assert together == pytest.approx(np.array([_draw(sides, each) for each in counts]), rel=1e-6)
+
+
+def test_a_resample_without_one_group_is_left_to_the_search_that_refuses_it() -> None:
+    sides = two_sides(amounts(rows=60), terms=["treated"])
+    treated = sides[1].fit.sample.basis.z[:, 1] > 0
+    zero = sides[1].fit.sample.y == 0
+    counts = np.array([~treated, ~(treated & ~zero), np.ones(60)], dtype=float)
+    found = _coefficient_draws(sides, counts)
+    assert np.isfinite(found).all(axis=1).tolist() == [False, False, True]
+
+
+def test_frequency_weights_in_the_bootstrap_are_duplicated_rows() -> None:
+    random = np.random.default_rng(2)
+    y = random.lognormal(0, 1, 40)
+    y[0] = 400.0
+    group, w = np.tile([0.0, 1.0], 20), np.tile([1.0, 1.0, 2.0, 2.0], 10)
+    tables: dict[str, Any] = {"outcome": {"column": "y", "transform": "log"}, "errors": ROBUST}
+    counted = refit(
+        table(y=y, group=group, w=w),
+        **tables,
+        model={"terms": ["group"], "weights": {"column": "w", "kind": "frequency"}},
+    ).comparison[0]
+    rows = np.repeat(np.arange(40), w.astype(int))
+    written_out = refit(table(y=y[rows], group=group[rows]), **tables, model={"terms": ["group"]}).comparison[0]
+    assert counted.method == written_out.method == "bootstrap-t"
+    assert counted.interval == pytest.approx(written_out.interval, rel=1e-6)

@@ -18,7 +18,7 @@ class Basis:
     """Columns z = x @ map that span the same space, centred and scaled; fits are made on z, told in x."""
 
     z: Array
-    """(n, r), in the order of the kept columns."""
+    """(n, r), in the order of the kept columns; stored column by column."""
     map: Array
     """(r, r): coefficients on x are map @ coefficients on z."""
     kept: tuple[int, ...]
@@ -36,11 +36,10 @@ def well_conditioned(x: Array) -> Basis:
     n, k = x.shape
     centre = x.mean(axis=0)
     centre[0] = 0.0
-    scale = _column_scale(x, centre)
+    z, scale = _centred(x, centre)
     flat = scale <= _COLLINEAR * np.abs(centre)
     flat[0] = False
     scale[flat] = 1.0
-    z = np.subtract(x, centre)
     z /= scale
     gram = z.T @ z / n
     pivots = _pivots(gram)
@@ -49,12 +48,14 @@ def well_conditioned(x: Array) -> Basis:
     return _factored(z, centre, scale, flat)
 
 
-def _column_scale(x: Array, centre: Array) -> Array:
-    squares = np.zeros(x.shape[1])
+def _centred(x: Array, centre: Array) -> tuple[Array, Array]:
+    """The columns less their centres, each in one piece of memory, and the root of their mean square."""
+    z = np.empty(x.shape, order="F")
     for start in range(0, len(x), BLOCK):
-        block = x[start : start + BLOCK] - centre
-        squares += np.einsum("ij,ij->j", block, block)
-    return np.asarray(np.sqrt(squares / len(x)))
+        rows = slice(start, start + BLOCK)
+        for column, middle in enumerate(centre):
+            np.subtract(x[rows, column], middle, out=z[rows, column])
+    return z, np.asarray(np.sqrt(np.einsum("ij,ij->j", z, z) / len(x)))
 
 
 def _pivots(gram: Array) -> Array:
@@ -93,7 +94,7 @@ def _factored(z: Array, centre: Array, scale: Array, flat: npt.NDArray[np.bool_]
     collinear = tuple((place, (0,) if flat[place] else _partners(r, kept, place)) for place in out)
     mixing = np.linalg.inv(_triangle(r[:, kept])) * np.sqrt(len(z))
     back = np.diag(1 / scale[kept]) @ mixing
-    return Basis(np.ascontiguousarray(z[:, kept] @ mixing), _map(centre[kept], back), tuple(kept), collinear)
+    return Basis(np.asfortranarray(z[:, kept] @ mixing), _map(centre[kept], back), tuple(kept), collinear)
 
 
 def _triangle(x: Array) -> Array:
