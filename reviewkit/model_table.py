@@ -196,12 +196,24 @@ _OTHER_CONVENTIONS = (
 )
 
 
+def named_prints(spec: Specification, names: tuple[str, ...]) -> tuple[tuple[str, PrintedTerm], ...]:
+    """The printed terms under the names of the design; a factor with one class besides its base needs no class.
+
+    Raises:
+        Refusal: A printed term is not among the model's terms.
+    """
+    found = []
+    for name, printed in spec.printed_terms:
+        meant = [each for each in names if each == name or each.startswith(f"{name}[")]
+        if len(meant) != 1:
+            allowed = ", ".join(meant or names[:12])
+            raise Refusal(f"printed.terms.{name}", "it is not one of the model's terms", allowed, "Check its spelling")
+        found.append((meant[0], printed))
+    return tuple(found)
+
+
 def agreements(spec: Specification, table: ModelTable) -> tuple[Agreement, ...]:
     """How each printed term agrees with the refit, and under which other convention a printed error would."""
-    for name, _ in spec.printed_terms:
-        if table.term(name) is None:
-            names = ", ".join(row.name for row in table.terms[:12])
-            raise Refusal(f"printed.terms.{name}", "it is not among the model's terms", names, "Check its spelling")
     return tuple(_agreement(name, printed, spec, table) for name, printed in spec.printed_terms)
 
 

@@ -18,11 +18,11 @@ from reviewkit.facts import Fact
 from reviewkit.fitting import FittedModel, check_focus, fit_alternative, fit_model, make_sample, submission_rows
 from reviewkit.implied import Focus, resolve_focus
 from reviewkit.joint import Progress, effective_clusters
-from reviewkit.model_table import Agreement, ModelTable, agreements, model_table
+from reviewkit.model_table import Agreement, ModelTable, agreements, model_table, named_prints
 from reviewkit.pairing import Task, arm_clusters, comparisons
 from reviewkit.refit_facts import refit_facts
 from reviewkit.refusals import Refusal
-from reviewkit.specification import Estimator, Specification
+from reviewkit.specification import Estimator, Specification, Transform
 from reviewkit.wording import counted
 
 if TYPE_CHECKING:
@@ -86,6 +86,13 @@ def reestimate(spec: Specification, table: DataTable, progress: Progress | None 
 def _reestimate(spec: Specification, table: DataTable, progress: Progress) -> Reestimation:
     if spec.estimator not in (Estimator.OLS, Estimator.POISSON):
         raise Refusal("model.estimator", f"`{spec.estimator}` is not estimated in this version", "ols, poisson")
+    if spec.estimator is Estimator.POISSON and spec.outcome.transform is not Transform.NONE:
+        raise Refusal(
+            "outcome.transform",
+            f"a Poisson model has no outcome in {spec.outcome.transform}: it is of the mean of the outcome itself",
+            "none",
+            'Set transform = "none", or estimator = "ols"',
+        )
     progress("building the design")
     design = build_design(spec, table.frame)
     own = submission_rows(spec, design)
@@ -93,6 +100,7 @@ def _reestimate(spec: Specification, table: DataTable, progress: Progress) -> Re
     submitted = fit_model(spec, spec.estimator, design, own)
     focus = resolve_focus(spec, design)
     check_focus(focus, submitted)
+    spec = replace(spec, printed_terms=named_prints(spec, submitted.design.names))
     first = _model_table(spec, spec.estimator, submitted)
     progress("fitting the alternative")
     usable, alternative, why_not = fit_alternative(spec, design)
