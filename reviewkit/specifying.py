@@ -13,6 +13,8 @@ from reviewkit.refusals import Refusal
 from reviewkit.specification import ERROR_TYPES, ErrorKind, Transform, specification_from
 
 MODEL = "model:main"
+A_TERM_TO_COME = "x"
+"""Stands for the terms while only what comes before them was answered."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -116,8 +118,9 @@ def problem_with(state: Specifying) -> str:
     values = specification_values(state)
     if not values["outcome"].get("column"):
         return ""
+    model = values["model"] if values["model"].get("terms") else {**values["model"], "terms": [A_TERM_TO_COME]}
     try:
-        specification_from({**values, "data": values["data"] or "data.csv"}, "The answer")
+        specification_from({**values, "data": values["data"] or "data.csv", "model": model}, "The answer")
     except Refusal as refusal:
         return refusal.message()
     return ""

