@@ -12,6 +12,8 @@ from reviewkit.refusals import Refusal
 
 GEOMETRIC = "The two corrections remove the bias of exp(b); neither turns a geometric into an arithmetic mean."
 _TERMS = 2000
+_LARGEST_TERM = 1e7
+_LARGEST_EXPONENT = 700.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -38,7 +40,7 @@ def percent_readings(b: float, se: float, df: float | None = None, level: float 
         percent=_percent(b),
         interval=(_percent(b - half), _percent(b + half)),
         kennedy_percent=_percent(b - se * se / 2),
-        minimum_variance_percent=None if df is None else 100 * (minimum_variance_ratio(b, se * se, df) - 1),
+        minimum_variance_percent=None if df is None else _minimum_variance_percent(b, se * se, df),
         coefficient_times_100=100 * b,
     )
 
@@ -49,18 +51,26 @@ def no_percent(b: float, why: str) -> PercentReadings:
 
 
 def minimum_variance_ratio(b: float, variance: float, df: float) -> float:
-    """exp(b) · 0F1(; df/2; -df · variance/4), summed as a series."""
-    total = term = 1.0
+    """exp(b) · 0F1(; df/2; -df · variance/4), summed as a series; nan where its terms cancel beyond nine digits."""
+    total = term = largest = 1.0
     for step in range(1, _TERMS):
         term *= (-df * variance / 4) / (step * (df / 2 + step - 1))
         total += term
+        largest = max(largest, abs(term))
+        if largest > _LARGEST_TERM:
+            return math.nan
         if abs(term) < 1e-17 * abs(total):
             break
     return math.exp(b) * total
 
 
+def _minimum_variance_percent(b: float, variance: float, df: float) -> float | None:
+    ratio = minimum_variance_ratio(b, variance, df)
+    return 100 * (ratio - 1) if math.isfinite(ratio) else None
+
+
 def _percent(b: float) -> float:
-    return 100 * math.expm1(b)
+    return 100 * math.expm1(b) if b < _LARGEST_EXPONENT else math.inf
 
 
 def _critical(level: float, df: float | None) -> float:

@@ -20,6 +20,8 @@ def numeric_values(node: Node, columns: Columns) -> Array:
     with np.errstate(all="ignore"):
         match node:
             case Column(name):
+                if columns[name].dtype == object:
+                    raise Refusal(f"column `{name}`", "it holds text where numbers are needed", "a numeric column")
                 return np.asarray(columns[name], dtype=float)
             case Literal(value) if isinstance(value, float):
                 return np.asarray(value)
@@ -47,7 +49,8 @@ def condition_holds(node: Node, columns: Columns) -> Mask:
             )
         case Binary(sign, left, right) if sign in _COMPARISONS:
             other = right.value if isinstance(right, Literal) else left.value if isinstance(left, Literal) else 0.0
-            holds = _COMPARISONS[sign](_comparable(left, columns, other), _comparable(right, columns, other))
+            sides = [_without_gaps(_comparable(each, columns, other)) for each in (left, right)]
+            holds = _COMPARISONS[sign](*sides)
             return np.asarray(holds, dtype=bool) & _all_present(node, columns)
     raise Refusal("model.where", f"`{node}` is not a condition", "comparisons joined by and, or, not")
 
@@ -123,6 +126,11 @@ def _comparable(node: Node, columns: Columns, other: object) -> npt.NDArray[Any]
         kind, wanted = ("text", "a text in quotes") if text else ("numbers", "a number")
         raise Refusal("model.where", f"`{node}` holds {kind} and is compared with something else", wanted)
     return columns[node.name] if isinstance(node, Column) else numeric_values(node, columns)
+
+
+def _without_gaps(values: npt.NDArray[Any]) -> npt.NDArray[Any]:
+    """The values with an empty text where a text is missing, so that texts have an order."""
+    return np.where(values == None, "", values) if values.dtype == object else values  # noqa: E711
 
 
 def _all_present(node: Node, columns: Columns) -> Mask:

@@ -166,6 +166,8 @@ def build_design(spec: Specification, frame: "pandas.DataFrame") -> Design:
         raise Refusal(
             "model.absorb", "absorbed effects are not estimated in this version", "terms", "Write factor(…) for each"
         )
+    if len(spec.errors.by) > 1:
+        raise Refusal("errors.by", "clusters in two ways are not estimated in this version", "one column")
     columns = _used_columns(spec, frame)
     kept, dropped = _usable_rows(spec, columns, len(frame))
     columns = {name: values[kept] for name, values in columns.items()}
@@ -268,6 +270,7 @@ def _usable_rows(
         keep(condition_holds(spec.where, columns), "outside the sample condition")
     in_condition = set(columns_of(spec.where)) if spec.where is not None else set()
     in_model = {name for term in spec.terms for name in columns_of(term)} | {spec.outcome.column, *spec.errors.by}
+    in_model |= {name for name in (spec.exposure, spec.weights.column if spec.weights else None) if name}
     for name, values in columns.items():
         if name in in_model or name not in in_condition:
             keep(~_missing(values), f"missing {name}")

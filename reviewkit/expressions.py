@@ -1,4 +1,4 @@
-"""Terms and row conditions of a specification: a closed grammar, read by a parser of our own and never evaluated as code."""
+"""Terms and row conditions of a specification: a closed grammar, read by our own parser and never evaluated as code."""
 
 import re
 from collections.abc import Callable
@@ -30,7 +30,7 @@ class Literal:
     value: float | str
 
     def __str__(self) -> str:
-        return f"{self.value:.12g}" if isinstance(self.value, float) else f"'{self.value}'"
+        return _number_text(self.value) if isinstance(self.value, float) else _quoted(self.value, "'")
 
 
 @dataclass(frozen=True, slots=True)
@@ -65,7 +65,9 @@ class Unary:
     operand: "Node"
 
     def __str__(self) -> str:
-        return f"{self.operator}{' ' if self.operator == 'not' else ''}{_bracketed(self.operand, self.operator)}"
+        if self.operator == "not":
+            return f"not {_bracketed(self.operand, 'not')}"
+        return f"-{_bracketed(self.operand, '*')}"
 
 
 @dataclass(frozen=True, slots=True)
@@ -90,8 +92,10 @@ class Factor:
     base: float | str | None = None
 
     def __str__(self) -> str:
-        base = "" if self.base is None else f", base={Literal(self.base)}".replace("'", '"')
-        return f"factor({Column(self.column)}{base})"
+        if self.base is None:
+            return f"factor({Column(self.column)})"
+        base = _quoted(self.base, '"') if isinstance(self.base, str) else _number_text(self.base)
+        return f"factor({Column(self.column)}, base={base})"
 
 
 @dataclass(frozen=True, slots=True)
@@ -157,6 +161,16 @@ _TOKEN = re.compile(
 )
 _COMPARISONS = ("<", "<=", ">", ">=", "==", "!=")
 _BINDING = {"or": 1, "and": 2, "not": 3, "+": 5, "-": 5, "*": 6, "/": 6, "^": 8} | dict.fromkeys(_COMPARISONS, 4)
+
+
+def _number_text(value: float) -> str:
+    short = f"{value:.12g}"
+    return short if float(short) == value else repr(value)
+
+
+def _quoted(text: str, mark: str) -> str:
+    other = "'" if mark == '"' else '"'
+    return f"{other}{text}{other}" if mark in text else f"{mark}{text}{mark}"
 
 
 def _bracketed(node: Node, operator: str) -> str:
@@ -226,7 +240,10 @@ class _Parser:
         if self.tokens[self.place : self.place + 1] == [("name", "factor")] and following == [("sign", "(")]:
             self.place += 2
             return self.factor()
-        return self.power()
+        node = self.power()
+        if not isinstance(node, Column | Apply) and not (isinstance(node, Binary) and node.operator == "^"):
+            raise self.refusal(f"`{node}` is not a term by itself: make a column of it, or write a:b for a product")
+        return node
 
     def factor(self) -> Factor:
         column, base = self.column(), None
@@ -251,6 +268,8 @@ class _Parser:
             kind, text = self.tokens[self.place]
             self.place += 1
             if kind == "number":
+                if float(text) == float("inf"):
+                    raise self.refusal(f"`{text}` is too large")
                 return -float(text) if negative else float(text)
             if kind in ("single", "double") and not negative:
                 return text
@@ -285,6 +304,8 @@ class _Parser:
         values = [self.literal()]
         while self.take(","):
             values.append(self.literal())
+        if len({type(value) for value in values}) > 1:
+            raise self.refusal("numbers and texts are mixed in one list")
         self.need(closing)
         return tuple(values)
 

@@ -1,5 +1,6 @@
 """`reviewkit percent`: the readings of one coefficient, as an object and in lines."""
 
+import math
 from dataclasses import asdict, replace
 from typing import Any
 
@@ -32,7 +33,8 @@ def read(b: str, se: str | None, df: float | None, constant: float, zeros: bool)
 
 def as_object(found: PercentReadings) -> dict[str, Any]:
     """The object that `--json` gives."""
-    return {"format": 1, **asdict(found)}
+    ends = found.interval and [end if math.isfinite(end) else None for end in found.interval]
+    return {"format": 1, **asdict(found), "interval": ends}
 
 
 def lines(found: PercentReadings) -> tuple[str, ...]:

@@ -167,7 +167,7 @@ def read_specification(path: Path) -> Specification:
         raise Refusal(path.name, "the file cannot be read as text", "a specification in UTF-8") from error
     try:
         values = tomllib.loads(text)
-    except (tomllib.TOMLDecodeError, RecursionError) as error:
+    except (ValueError, RecursionError) as error:  # ValueError: also a whole number of too many digits
         raise Refusal(path.name, f"not valid TOML ({error})", remedy="Correct that line") from error
     return specification_from(values, path.name)
 
@@ -182,6 +182,8 @@ def specification_from(values: Mapping[str, Any], where: str) -> Specification:
     terms = tuple(
         dict.fromkeys(term for text in model.texts("terms") for term in read_terms(text, f"{where}, model.terms"))
     )
+    if not terms:
+        raise Refusal(f"{where}, model.terms", "no term is given", "one term or more", 'Add terms = ["…"]')
     row_condition = model.text("where")
     alternative = table.table("alternative").choice("estimator", Estimator)
     printed = table.table("printed")
@@ -301,8 +303,9 @@ class _Table:
         value = self.values.get(key)
         if value is None:
             return None
-        if isinstance(value, bool) or not isinstance(value, int | float) or not holds(float(value)):
-            raise Refusal(self.place(key), f"`{value}` is not possible here", allowed)
+        real = isinstance(value, int | float) and not isinstance(value, bool) and abs(value) < 1e300
+        if not real or not holds(float(value)):
+            raise Refusal(self.place(key), f"`{str(value)[:40]}` is not possible here", allowed)
         return float(value)
 
     def choice(self, key: str, choices: type[_Choice]) -> _Choice | None:
@@ -352,6 +355,8 @@ def _outcome(table: _Table) -> Outcome:
 
 def _check_exposure(outcome: _Table, model: _Table) -> None:
     transform = outcome.choice("transform", Transform) or Transform.NONE
+    if not model.text("exposure") and outcome.text("per_exposure") not in (None, PerExposure.NO):
+        raise Refusal(outcome.place("per_exposure"), "no exposure is named", "no", "Add exposure = … to [model]")
     if model.text("exposure") and transform is not Transform.NONE and "per_exposure" not in outcome.values:
         raise Refusal(
             outcome.place("per_exposure"),
