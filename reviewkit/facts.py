@@ -48,6 +48,7 @@ class NotStated:
     _one: "NotStated | None" = None
 
     def __new__(cls) -> "NotStated":
+        """The only one there is."""
         if cls._one is None:
             cls._one = super().__new__(cls)
         return cls._one
