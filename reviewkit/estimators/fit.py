@@ -107,9 +107,15 @@ def cluster_sums(rows: Array, codes: Codes, count: int) -> Array:
 
 
 def weighted_gram(z: Array, weights: Array) -> Array:
-    """Sum over rows of weights · zz', (k, k), block by block."""
+    """Sum over rows of weights · zz', (k, k), block by block; weights are not below zero."""
     gram = np.zeros((z.shape[1], z.shape[1]))
     for start in range(0, len(z), BLOCK):
-        block = z[start : start + BLOCK]
-        gram += (block * weights[start : start + BLOCK, None]).T @ block
+        rows = slice(start, start + BLOCK)
+        gram += root_gram(z[rows], weights[rows])
     return gram
+
+
+def root_gram(z: Array, weights: Array) -> Array:
+    """The same for one block, by the root of weights not below zero: a product with itself takes half the work."""
+    half = z * np.sqrt(weights)[:, None]
+    return np.asarray(half.T @ half)
