@@ -4,7 +4,7 @@ With clusters each number is found again without each cluster in turn. Without, 
 one minus the leverage carry the error; where few rows carry it, a symmetric bootstrap-t takes the place of t.
 """
 
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Mapping, Sequence
 from contextlib import suppress
 from dataclasses import dataclass, replace
 
@@ -15,7 +15,7 @@ from scipy.special import stdtrit
 from reviewkit.estimators.fit import Codes, Fit, Sample, cluster_sums, pull
 from reviewkit.estimators.least_squares import fit_least_squares
 from reviewkit.estimators.poisson import fit_poisson
-from reviewkit.estimators.resampling import coefficient_draws
+from reviewkit.estimators.resampling import coefficient_draws, fit_at, resampled_estimates
 from reviewkit.implied import Contrast, MeanModel, coefficient_influence, effect, effect_influence
 from reviewkit.refusals import NotEstimable
 
@@ -176,13 +176,25 @@ def _counts(random: np.random.Generator, owner: Codes, shape: tuple[int, int]) -
 
 
 def _draws(sides: tuple[Side, Side], counts: Array) -> Array:
-    """Five numbers for each resample (B, rows): coefficients all at once; what that leaves, and effects, one by one."""
-    draws = np.full((len(counts), 5), np.nan)
-    if all(side.place is not None for side in sides):
-        draws = _coefficient_draws(sides, counts)
+    """Five numbers for each resample (B, rows), fitted all at once; what that leaves is fitted one by one."""
+    both = all(side.place is not None for side in sides)
+    draws = _coefficient_draws(sides, counts) if both else _effect_draws(sides, counts)
     for number in np.flatnonzero(~np.isfinite(draws).all(axis=1)):
         with suppress(NotEstimable, np.linalg.LinAlgError):
             draws[number] = _draw(sides, counts[number])
+    return draws
+
+
+def _effect_draws(sides: tuple[Side, Side], counts: Array) -> Array:
+    draws = np.full((len(counts), 5), np.nan)
+    found = [resampled_estimates(side.fit, counts[:, side.rows]) for side in sides]
+    for number in np.flatnonzero(np.isfinite(np.hstack(found)).all(axis=1)):
+        again = [
+            replace(side, fit=fit_at(side.fit, estimates[number], counts[number, side.rows]))
+            for side, estimates in zip(sides, found, strict=True)
+        ]
+        with suppress(NotEstimable, np.linalg.LinAlgError):
+            draws[number] = _five(again, counts[number])
     return draws
 
 
@@ -196,12 +208,16 @@ def _coefficient_draws(sides: tuple[Side, Side], counts: Array) -> Array:
 
 
 def _draw(sides: tuple[Side, Side], counts: Array) -> tuple[float, ...]:
+    return _five([_resampled(side, counts[side.rows]) for side in sides], counts)
+
+
+def _five(sides: Sequence[Side], counts: Array) -> tuple[float, ...]:
+    """Both numbers of a resample, their variances and their covariance."""
     numbers, psi = [], np.zeros((2, counts.size))
     for which, side in enumerate(sides):
-        again = _resampled(side, counts[side.rows])
-        value, influences = again.influence(jackknifed=True)
+        value, influences = side.influence(jackknifed=True)
         numbers.append(value)
-        psi[which, again.rows] = influences
+        psi[which, side.rows] = influences
     (v_s, c), (_, v_a) = (psi * counts) @ psi.T
     return numbers[0], numbers[1], v_s, v_a, c
 

@@ -17,7 +17,7 @@ from reviewkit.design_matrix import build_design
 from reviewkit.estimators.basis import well_conditioned
 from reviewkit.fitting import fit_model, submission_rows
 from reviewkit.implied import contrast, effect, effect_influence, exponential_mean, resolve_focus, smeared_mean
-from reviewkit.joint import FITTERS, Joint, Side, _coefficient_draws, _counts, _draw
+from reviewkit.joint import FITTERS, Joint, Side, _coefficient_draws, _counts, _draw, _effect_draws
 from reviewkit.reestimation import make_sample
 from reviewkit.specification import Estimator
 from reviewkit.transforms import transformed
@@ -352,6 +352,27 @@ def test_resamples_fitted_together_are_those_fitted_one_by_one(weights: Any) -> 
     counts = _counts(random, np.arange(120), (60, 120))
     together = _coefficient_draws(sides, counts)
     assert together == pytest.approx(np.array([_draw(sides, each) for each in counts]), rel=1e-6)
+
+
+@pytest.mark.parametrize("term", ["treated", "log(size)"])
+def test_effects_in_resamples_fitted_together_are_those_fitted_one_by_one(term: str) -> None:
+    spec = specification(
+        outcome={"column": "y", "transform": "log_plus", "per_exposure": "before_constant"},
+        model={"terms": ["treated*log(size)"], "focus": [term], "exposure": "days"},
+        errors=ROBUST,
+    )
+    design = build_design(spec, amounts(rows=120).frame)
+    (focus,) = resolve_focus(spec, design)
+    of, every = contrast(design, focus, focus.scale(in_levels=False)), np.ones(120, dtype=bool)
+    fits = [fit_model(spec, each, design, every).fit for each in (Estimator.OLS, Estimator.POISSON)]
+    models = (smeared_mean(spec.outcome, design), exponential_mean(design))
+    submitted, alternative = (
+        Side(fit, np.arange(120), None, None, model, of) for fit, model in zip(fits, models, strict=True)
+    )
+    counts = _counts(np.random.default_rng(3), np.arange(120), (30, 120))
+    together = _effect_draws((submitted, alternative), counts)
+    expected = np.array([_draw((submitted, alternative), each) for each in counts])
+    assert together == pytest.approx(expected, rel=1e-6)
 
 
 def test_a_resample_without_one_group_is_left_to_the_search_that_refuses_it() -> None:

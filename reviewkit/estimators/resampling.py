@@ -1,12 +1,14 @@
-"""One fit made again on many resamples of its rows at once: a coefficient of each, and each row's influence on it.
+"""One fit made again on many resamples of its rows at once, and what a coefficient of each and its influence rows are.
 
 All resamples take their Newton steps together, from the estimate of the whole sample until each has come to rest.
 """
 
+from dataclasses import replace
+
 import numpy as np
 import numpy.typing as npt
 
-from reviewkit.estimators.fit import Fit, Sample
+from reviewkit.estimators.fit import Fit, Sample, weighted_gram
 
 Array = npt.NDArray[np.float64]
 
@@ -22,8 +24,7 @@ def coefficient_draws(fit: Fit, place: int, counts: Array) -> tuple[Array, Array
     """
     z, sample = fit.sample.basis.z, fit.sample
     weights = counts * sample.weights
-    with np.errstate(over="ignore", invalid="ignore"):  # a resample that runs away is nan in the end
-        on_basis = _solved(z, weights, sample) if fit.estimator == "ols" else _settled(fit, weights)
+    on_basis = resampled_estimates(fit, counts)
     mean = _mean(fit, on_basis)
     curvature = np.ones_like(mean) if fit.estimator == "ols" else mean
     bread = np.full((len(counts), *fit.bread.shape), np.nan)
@@ -37,6 +38,32 @@ def coefficient_draws(fit: Fit, place: int, counts: Array) -> tuple[Array, Array
     psi *= sample.y - mean
     psi /= np.maximum(left, 1e-10, out=left)
     return on_basis @ sample.basis.map[place], psi
+
+
+def resampled_estimates(fit: Fit, counts: Array) -> Array:
+    """Coefficients on the basis in each resample, (B, k); nan where it cannot be fitted so."""
+    weights = counts * fit.sample.weights
+    with np.errstate(over="ignore", invalid="ignore"):  # a resample that runs away is nan in the end
+        return _solved(fit.sample.basis.z, weights, fit.sample) if fit.estimator == "ols" else _settled(fit, weights)
+
+
+def fit_at(fit: Fit, on_basis: Array, counts: Array) -> Fit:
+    """The fit of one resample, whose estimate (k,) is known."""
+    sample = replace(fit.sample, multiplicity=counts, clusters=None)
+    mean = _mean(fit, on_basis)
+    curvature = np.ones_like(mean) if fit.estimator == "ols" else mean
+    return replace(
+        fit,
+        sample=sample,
+        coefficients=sample.basis.map @ on_basis,
+        on_basis=on_basis,
+        index=sample.basis.z @ on_basis,
+        mean=mean,
+        curvature=curvature,
+        bread=np.asarray(
+            np.linalg.inv(weighted_gram(sample.basis.z, counts * sample.weights * curvature)), dtype=float
+        ),
+    )
 
 
 def _solved(z: Array, weights: Array, sample: Sample) -> Array:
@@ -69,7 +96,7 @@ def _settled(fit: Fit, weights: Array) -> Array:
 
 
 def _mean(fit: Fit, on_basis: Array) -> Array:
-    """Fitted means at many coefficients (B, k), (B, n)."""
+    """Fitted means at coefficients (k,) or many of them (B, k): (n,) or (B, n)."""
     index = on_basis @ fit.sample.basis.z.T
     index += fit.sample.offset
     return index if fit.estimator == "ols" else np.asarray(np.exp(index, out=index))
