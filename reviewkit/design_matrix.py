@@ -8,7 +8,7 @@ import numpy as np
 import numpy.typing as npt
 
 from reviewkit.column_values import Columns, condition_holds, numeric_values, present, slope_values
-from reviewkit.expressions import Column, Factor, Node, Term, columns_of
+from reviewkit.expressions import Column, Factor, Node, Term, columns_of, part_text
 from reviewkit.refusals import NotEstimable, Refusal
 from reviewkit.specification import Specification, WeightKind
 
@@ -166,6 +166,8 @@ def build_design(spec: Specification, frame: "pandas.DataFrame") -> Design:
         raise Refusal(
             "model.absorb", "absorbed effects are not estimated in this version", "terms", "Write factor(…) for each"
         )
+    if not spec.terms:
+        raise Refusal("model.terms", "no term is given", "one term or more", 'Add terms = ["…"]')
     if len(spec.errors.by) > 1:
         raise Refusal("errors.by", "clusters in two ways are not estimated in this version", "one column")
     columns = _used_columns(spec, frame)
@@ -329,7 +331,7 @@ def _design_columns(terms: Sequence[Term], columns: Columns) -> tuple[DesignColu
 
 def _part_columns(part: Node | Factor, columns: Columns, drop_base: bool) -> list[tuple[str, Node | Level]]:
     if not isinstance(part, Factor):
-        return [(str(part), part)]
+        return [(part_text(part), part)]
     levels = factor_levels(part, columns)
     return [(_level_name(part, level), Level(part.column, level)) for level in levels[1 if drop_base else 0 :]]
 

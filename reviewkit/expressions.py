@@ -105,7 +105,7 @@ class Term:
     parts: tuple[Node | Factor, ...]
 
     def __str__(self) -> str:
-        return ":".join(str(part) for part in self.parts)
+        return ":".join(map(part_text, self.parts))
 
 
 def read_terms(text: str, where: str) -> tuple[Term, ...]:
@@ -161,6 +161,12 @@ _TOKEN = re.compile(
 )
 _COMPARISONS = ("<", "<=", ">", ">=", "==", "!=")
 _BINDING = {"or": 1, "and": 2, "not": 3, "+": 5, "-": 5, "*": 6, "/": 6, "^": 8} | dict.fromkeys(_COMPARISONS, 4)
+
+
+def part_text(part: Node | Factor) -> str:
+    """A part of a term as it is written and named: arithmetic in brackets."""
+    bare = isinstance(part, Column | Apply | Factor) or (isinstance(part, Binary) and part.operator == "^")
+    return str(part) if bare else f"({part})"
 
 
 def _number_text(value: float) -> str:
@@ -241,8 +247,9 @@ class _Parser:
             self.place += 2
             return self.factor()
         node = self.power()
-        if not isinstance(node, Column | Apply) and not (isinstance(node, Binary) and node.operator == "^"):
-            raise self.refusal(f"`{node}` is not a term by itself: make a column of it, or write a:b for a product")
+        condition = isinstance(node, Binary | Unary) and _BINDING[node.operator] < _BINDING["+"]
+        if condition or isinstance(node, Literal | Member):
+            raise self.refusal(f"`{node}` is not a term by itself")
         return node
 
     def factor(self) -> Factor:

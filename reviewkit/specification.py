@@ -1,7 +1,7 @@
 """One regression as data: it names columns and holds no code."""
 
 import tomllib
-from collections.abc import Callable, Mapping
+from collections.abc import Mapping
 from dataclasses import dataclass
 from enum import StrEnum
 from pathlib import Path
@@ -182,8 +182,6 @@ def specification_from(values: Mapping[str, Any], where: str) -> Specification:
     terms = tuple(
         dict.fromkeys(term for text in model.texts("terms") for term in read_terms(text, f"{where}, model.terms"))
     )
-    if not terms:
-        raise Refusal(f"{where}, model.terms", "no term is given", "one term or more", 'Add terms = ["…"]')
     row_condition = model.text("where")
     alternative = table.table("alternative").choice("estimator", Estimator)
     printed = table.table("printed")
@@ -299,13 +297,12 @@ class _Table:
             return tuple(listed)
         raise Refusal(self.place(key), "this is not a list of texts", 'a list such as ["a", "b"]')
 
-    def number(self, key: str, allowed: str, holds: Callable[[float], bool]) -> float | None:
+    def positive(self, key: str) -> float | None:
         value = self.values.get(key)
         if value is None:
             return None
-        real = isinstance(value, int | float) and not isinstance(value, bool) and abs(value) < 1e300
-        if not real or not holds(float(value)):
-            raise Refusal(self.place(key), f"`{str(value)[:40]}` is not possible here", allowed)
+        if isinstance(value, bool) or not isinstance(value, int | float) or not 0 < value < 1e300:
+            raise Refusal(self.place(key), f"`{str(value)[:40]}` is not possible here", "a number above 0")
         return float(value)
 
     def choice(self, key: str, choices: type[_Choice]) -> _Choice | None:
@@ -322,26 +319,22 @@ class _Table:
 
 
 def _check_keys(values: Mapping[str, Any], where: str) -> None:
-    inner = {"outcome": values, "model": values, "errors": values, "alternative": values, "printed": values}
     model = values.get("model", {})
-    tables: list[tuple[str, str, Any]] = [("", "", values)]
-    tables += [(key, key, holder.get(key)) for key, holder in inner.items()]
-    tables.append(("model.weights", "model.weights", model.get("weights") if isinstance(model, Mapping) else None))
-    for name, allowed, table in tables:
-        unknown = [key for key in table if key not in KEYS[allowed]] if isinstance(table, Mapping) else []
+    tables = [("", values), ("model.weights", model.get("weights") if isinstance(model, Mapping) else None)]
+    tables += [(key, values.get(key)) for key in ("outcome", "model", "errors", "alternative", "printed")]
+    for name, table in tables:
+        unknown = [key for key in table if key not in KEYS[name]] if isinstance(table, Mapping) else []
         if unknown:
             place = f"{where}, {name + '.' if name else ''}{unknown[0]}"
-            raise Refusal(place, "this key is not known", ", ".join(KEYS[allowed]), "Check its spelling")
+            raise Refusal(place, "this key is not known", ", ".join(KEYS[name]), "Check its spelling")
 
 
 def _outcome(table: _Table) -> Outcome:
     zeros = table.choice("zeros", Zeros) or Zeros.KEPT
-    replacement = table.number("replacement", "a number above 0", lambda value: 0 < value < float("inf"))
+    replacement = table.positive("replacement")
     if (zeros is Zeros.REPLACED) != (replacement is not None):
         raise Refusal(table.place("replacement"), 'it goes with zeros = "replaced"', "both or neither")
-    finite: Callable[[float], bool] = lambda value: 0 < value < float("inf")  # noqa: E731
-    constant = table.number("constant", "a number above 0", finite)
-    scale = table.number("scale", "a number above 0", finite)
+    constant, scale = table.positive("constant"), table.positive("scale")
     return Outcome(
         column=table.required("column"),
         transform=table.choice("transform", Transform) or Transform.NONE,

@@ -80,6 +80,15 @@ def test_a_first_term_that_names_its_base_is_the_focus_where_none_is_said() -> N
     assert [each.term for each in found.comparison] == ["factor(region)[east]", "factor(region)[north]"]
 
 
+def test_arithmetic_of_columns_can_be_a_term_and_the_focus() -> None:
+    found = refit(amounts(), outcome={"column": "y"}, model={"terms": ["(size / 1000)", "treated"]}).submitted
+    plain = refit(amounts(), outcome={"column": "y"}, model={"terms": ["size", "treated"]}).submitted
+    thousands, whole = found.term("(size / 1000)"), plain.term("size")
+    assert thousands is not None
+    assert whole is not None
+    assert thousands.estimate == pytest.approx(1000 * whole.estimate, rel=1e-9)
+
+
 def test_an_unknown_base_is_refused_with_the_classes() -> None:
     with pytest.raises(Refusal, match=r"not among the classes in use\. Allowed: clay, sand, silt"):
         with_terms('factor(soil, base="loam")')
@@ -171,6 +180,11 @@ def test_no_row_left_says_what_took_them() -> None:
 
 
 # --- columns that are refused, and what cannot be estimated -----------------------------------------------------
+
+
+def test_a_model_without_terms_is_refused() -> None:
+    with pytest.raises(Refusal, match="no term is given"):
+        refit(amounts(), outcome={"column": "y"})
 
 
 def test_an_unknown_column_is_refused_with_near_names() -> None:

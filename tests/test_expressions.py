@@ -41,6 +41,7 @@ HERB, SOIL = Column("herb"), Column("soil")
         ("factor(year, base=-3)", (Term((Factor("year", -3.0),)),)),
         ("herb:soil", (Term((HERB, SOIL)),)),
         ("herb*soil", (Term((HERB,)), Term((SOIL,)), Term((HERB, SOIL)))),
+        ("(herb / 1000)", (Term((Binary("/", HERB, Literal(1000.0)),)),)),
         ("herb^2", (Term((Binary("^", HERB, Literal(2.0)),)),)),
         ("factor(soil):log(herb)", (Term((Factor("soil"), Apply("log", HERB))),)),
     ],
@@ -92,7 +93,9 @@ def test_arithmetic_binds_as_usual() -> None:
         ("a:", "a column name is missing"),
         ("a b", "`b` is unexpected"),
         ("a + b", "`+` is unexpected"),
-        ("(a + b)", "is not a term by itself"),
+        ("(a == b)", "is not a term by itself"),
+        ("(not a)", "is not a term by itself"),
+        ("(a in (1, 2))", "is not a term by itself"),
         ("7", "is not a term by itself"),
         ("-a", "a column name is missing"),
         ("log(a", "`)` is missing"),
@@ -207,7 +210,7 @@ def test_a_condition_written_and_read_again_is_the_same(node: Binary) -> None:
         assert read_row_condition(text, "here") == node
 
 
-@given(st.lists(names | st.builds(Apply, st.sampled_from(FUNCTIONS), numeric), min_size=1, max_size=3))
+@given(st.lists(numeric.filter(lambda node: not isinstance(node, Literal)), min_size=1, max_size=3))
 def test_a_term_written_and_read_again_is_the_same(parts: list[Column]) -> None:
     term = Term(tuple(parts))
     if len(str(term)) <= LONGEST:

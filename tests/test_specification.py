@@ -162,7 +162,6 @@ def test_any_specification_is_read_the_same_again(
             "outcome.per_exposure",
             "no exposure is named",
         ),
-        ({"model": {}}, "model.terms", "no term is given"),
         ({"model": {"terms": [1]}}, "model.terms", "not a list of texts"),
         ({"model": {"terms": ["lag(x)"]}}, "model.terms", "lags need the data's order"),
         ({"model": {"terms": ["x"], "where": "x ="}}, "model.where", "unexpected"),
