@@ -10,7 +10,10 @@ from dataclasses import dataclass
 
 from reviewkit.refusals import Refusal
 
-GEOMETRIC = "The two corrections remove the bias of exp(b); neither turns a geometric into an arithmetic mean."
+GEOMETRIC = (
+    "The two corrections, made for normal log errors, remove the bias of exp(b); neither turns a geometric into an "
+    "arithmetic mean."
+)
 _TERMS = 2000
 _LARGEST_TERM = 1e7
 _LARGEST_EXPONENT = 700.0

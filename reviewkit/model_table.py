@@ -1,6 +1,7 @@
 """A fitted model as its own table shows it: terms with errors by its convention, percents, and how prints agree."""
 
 from collections.abc import Mapping
+from contextlib import suppress
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -11,7 +12,7 @@ from reviewkit.design_matrix import CONSTANT, Design, DesignColumn, Level, part_
 from reviewkit.estimators.covariance import Inference, infer
 from reviewkit.estimators.fit import Fit
 from reviewkit.expressions import Column
-from reviewkit.refusals import Refusal
+from reviewkit.refusals import NotEstimable, Refusal
 from reviewkit.specification import (
     ErrorKind,
     Errors,
@@ -70,8 +71,8 @@ class Agreement:
     term: str
     estimate: bool | None
     std_error: bool | None
-    error_under: str | None = None
-    """Another common convention under which the printed error is met."""
+    error_under: tuple[str, ...] = ()
+    """Other common conventions under which the printed error is met, where it is not under the stated one."""
 
 
 def model_table(
@@ -222,25 +223,24 @@ def _agreement(name: str, printed: PrintedTerm, spec: Specification, table: Mode
     assert row is not None  # noqa: S101
     estimate = printed.estimate.agrees(row.estimate) if printed.estimate else None
     error = printed.std_error.agrees(row.std_error) if printed.std_error else None
-    under = _met_under(printed, table.design.names.index(name), spec, table) if error is False else None
+    under = _met_under(printed, table.design.names.index(name), spec, table) if error is False else ()
     return Agreement(name, estimate, error, under)
 
 
-def _met_under(printed: PrintedTerm, place: int, spec: Specification, table: ModelTable) -> str | None:
+def _met_under(printed: PrintedTerm, place: int, spec: Specification, table: ModelTable) -> tuple[str, ...]:
     by = spec.errors.by
     clustered = tuple(
         Errors(ErrorKind.CLUSTER, type_, by, factor)
         for type_, factor in (("CR1", "default"), ("CR0", "default"), ("CR0", "G/(G-1)"))
         if by
     )
+    met = []
     for errors in (*_OTHER_CONVENTIONS, *clustered):
-        try:
-            found = infer(table.fit, errors)
-        except Refusal:
-            continue
-        if printed.std_error and printed.std_error.agrees(float(found.std_errors[place])):
-            return errors_text(errors)
-    return None
+        with suppress(NotEstimable):
+            error = float(infer(table.fit, errors).std_errors[place])
+            if printed.std_error and printed.std_error.agrees(error):
+                met.append(errors_text(errors))
+    return tuple(met)
 
 
 def errors_text(errors: Errors, clusters: int = 0) -> str:

@@ -123,7 +123,8 @@ def _reestimate(spec: Specification, table: DataTable, progress: Progress) -> Re
         facts=(),
         warnings=_warnings(first, second, own, usable),
     )
-    exhibits = _exhibits(found, design, submitted, table.labels.get(spec.outcome.column) or spec.outcome.column)
+    label = table.labels.get(spec.outcome.column) or spec.outcome.column
+    exhibits = _exhibits(found, design, submitted, focus[0], label)
     return replace(found, exhibits=exhibits, facts=_facts(found, design, focus))
 
 
@@ -142,17 +143,17 @@ def _reproduced(spec: Specification, agreement: tuple[Agreement, ...], table: Mo
     return all(estimates) and n_met
 
 
-def _exhibits(found: Reestimation, design: Design, made: FittedModel, label: str) -> tuple[Exhibit, ...]:
+def _exhibits(found: Reestimation, design: Design, made: FittedModel, focus: Focus, label: str) -> tuple[Exhibit, ...]:
     names = tuple(dict.fromkeys(each.term for each in found.comparison))
     tables = (found.submitted, found.alternative)
     linear = make_sample(made.design, made.fit.sample.basis, made.design.y, np.zeros(made.design.rows))
     place = made.design.names.index(names[0])
     return (
-        sample_exhibit(design, tables, label),
+        sample_exhibit(design, tables, label, focus),
         models_exhibit(*tables, found.agreement, names),
         comparison_exhibit(found.comparison, LEVEL),
         percent_exhibit(*tables, names),
-        baseline_exhibit(linear, made.design, place, label),
+        baseline_exhibit(linear, made.design, place, found.specification.errors, label),
     )
 
 
@@ -166,7 +167,11 @@ def _warnings(first: ModelTable, second: ModelTable | None, own: Mask, usable: M
             "(separation); they are left out of it, and the comparison is on the rows of both models first"
         )
     dropped = int((~own).sum())
-    if dropped:
+    if dropped and first.estimator is Estimator.POISSON:
+        found.append(
+            f"{counted(dropped, 'row')} with outcome zero left out: dropped, or fitted as certain zeros (separation)"
+        )
+    elif dropped:
         found.append(f"the submission leaves out {counted(dropped, 'row')} with an outcome of zero or below")
     return tuple(found)
 

@@ -1,7 +1,7 @@
 """The facts that a re-estimation yields about its model: what script or text say is held against them."""
 
 import math
-from collections.abc import Mapping
+from collections.abc import Callable, Iterable, Mapping
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -13,23 +13,10 @@ from reviewkit.facts import NOT_STATED, Fact, Source, SourceKind, Standing, Valu
 from reviewkit.implied import Scale
 from reviewkit.model_table import ModelTable
 from reviewkit.specification import Transform, Zeros
+from reviewkit.specified import TRANSFORM_WORDS
 
 if TYPE_CHECKING:
     from reviewkit.reestimation import Reestimation
-
-TRANSFORM_WORDS: Mapping[Transform, str] = {
-    Transform.NONE: "none",
-    Transform.LOG: "log",
-    Transform.LOG_PLUS: "log of y plus a constant",
-    Transform.ASINH: "inverse hyperbolic sine",
-    Transform.SQRT: "square root",
-    Transform.LOGIT: "logit of a fraction",
-    Transform.ARCSINE: "arcsine root",
-    Transform.BOX_COX: "Box-Cox",
-    Transform.RANK: "rank",
-    Transform.STANDARDISED: "standardised",
-}
-"""The values of the fact `outcome.transform`."""
 
 
 def refit_facts(found: "Reestimation", design: Design, clusters: Mapping[str, float]) -> tuple[Fact, ...]:
@@ -132,6 +119,9 @@ def _comparison_facts(first: Comparison, read: Comparison | None) -> dict[str, V
         "refit.difference_excludes_zero": _yes(first.excludes_zero),
         "refit.agree_within_percent": _number_or_none(first.agree_within_percent) if done else None,
         "refit.differ_by_at_least_percent": _number_or_none(first.differ_by_at_least_percent) if done else None,
+        "refit.relative_percent": _number_or_none(first.relative_percent) if done else None,
+        "refit.relative_smallest": _relative_end(first, min) if done else None,
+        "refit.relative_largest": _relative_end(first, max) if done else None,
         "refit.submitted": first.submitted,
         "refit.submitted_low": own_low,
         "refit.submitted_high": own_high,
@@ -148,6 +138,12 @@ def _comparison_facts(first: Comparison, read: Comparison | None) -> dict[str, V
         "refit.effective_rows": first.effective if first.method != "leave-one-cluster-out" else None,
         "refit.weak": _yes(first.weak is not None),
     }
+
+
+def _relative_end(first: Comparison, which: Callable[[Iterable[float]], float]) -> Value:
+    """The smaller or larger size of the difference in per cent of the submitted number, where it is off zero."""
+    ends = first.relative_interval
+    return NOT_STATED if ends is None or ends[0] * ends[1] <= 0 else which(abs(end) for end in ends)
 
 
 def _in_percent(first: Comparison, value: float | None) -> Value | None:

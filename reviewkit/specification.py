@@ -347,13 +347,13 @@ def _outcome(table: _Table) -> Outcome:
 
 
 def _check_exposure(outcome: _Table, model: _Table) -> None:
-    transform = outcome.choice("transform", Transform) or Transform.NONE
+    least_squares = model.choice("estimator", Estimator) in (None, Estimator.OLS)
     if not model.text("exposure") and outcome.text("per_exposure") not in (None, PerExposure.NO):
         raise Refusal(outcome.place("per_exposure"), "no exposure is named", "no", "Add exposure = … to [model]")
-    if model.text("exposure") and transform is not Transform.NONE and "per_exposure" not in outcome.values:
+    if model.text("exposure") and least_squares and "per_exposure" not in outcome.values:
         raise Refusal(
             outcome.place("per_exposure"),
-            "with an exposure and a transformed outcome this must be said",
+            "with an exposure and least squares this must be said",
             ", ".join(PerExposure),
             "Say whether the outcome was divided by the exposure, and whether before or after a constant was added",
         )

@@ -198,7 +198,7 @@ def test_an_unknown_column_is_refused_with_near_names() -> None:
         {"model": {"terms": ["soil"]}},
         {"model": {"terms": ["log(soil)"]}},
         {"outcome": {"column": "soil"}, "model": {"terms": ["size"]}},
-        {"model": {"terms": ["size"], "exposure": "soil"}},
+        {"model": {"terms": ["size"], "exposure": "soil", "estimator": "poisson"}},
         {"model": {"terms": ["size"], "weights": {"column": "soil", "kind": "analytic"}}},
     ],
 )
@@ -267,7 +267,7 @@ def test_a_missing_weight_leaves_the_row_out_also_where_a_condition_lets_it_in(k
 
 def test_an_exposure_of_zero_is_left_out_and_counted() -> None:
     frame = FRAME.assign(days=[0.0, -1.0, *range(1, 11)])
-    made = with_terms("size", frame=frame, exposure="days")
+    made = with_terms("size", frame=frame, exposure="days", estimator="poisson")
     assert made.dropped == (("days not above 0", 2),)
     assert made.offset == pytest.approx(np.log(np.arange(1, 11)))
 

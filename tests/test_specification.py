@@ -183,11 +183,12 @@ def test_what_is_not_allowed_is_said_with_its_place(tables: dict[str, Any], plac
     assert refused.value.status == 2
 
 
-def test_with_an_exposure_a_transformed_outcome_must_say_what_was_divided() -> None:
+@pytest.mark.parametrize("transform", ["none", "log"])
+def test_with_an_exposure_least_squares_must_say_what_was_divided(transform: str) -> None:
     model = {"terms": ["x"], "exposure": "days"}
     with pytest.raises(Refusal, match="no, before_constant, after_constant"):
-        from_tables(outcome={"column": "y", "transform": "log"}, model=model)
-    assert from_tables(outcome={"column": "y"}, model=model).exposure == "days"
+        from_tables(outcome={"column": "y", "transform": transform}, model=model)
+    assert from_tables(outcome={"column": "y"}, model={**model, "estimator": "poisson"}).exposure == "days"
 
 
 @pytest.mark.parametrize(

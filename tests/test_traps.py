@@ -95,8 +95,14 @@ def test_a_separated_poisson_submission_is_not_given_a_made_up_number() -> None:
     data = amounts()
     wet = (np.arange(400) % 8 == 0).astype(float)
     frame = data.frame.assign(wet=wet, y=data.frame["y"] * (1 - wet))
-    with pytest.raises(NotEstimable):
-        refit(table(**frame), outcome={"column": "y"}, model={"terms": ["treated", "wet"], "estimator": "poisson"})
+    model = {"terms": ["treated", "wet"], "estimator": "poisson"}
+    found = refit(table(**frame), outcome={"column": "y"}, model=model)
+    assert found.submitted.term("wet") is None
+    assert found.submitted.design.rows == 350
+    assert any("wet" in each for each in found.warnings)
+    assert any("50 rows" in each and "separation" in each for each in found.warnings)
+    with pytest.raises(NotEstimable, match="wet"):
+        refit(table(**frame), outcome={"column": "y"}, model={**model, "focus": ["wet"]})
 
 
 def test_a_negative_outcome_is_refused_for_poisson_and_leaves_the_submission_its_table() -> None:

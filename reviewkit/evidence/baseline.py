@@ -12,10 +12,12 @@ import numpy.typing as npt
 
 from reviewkit.design_matrix import Design
 from reviewkit.estimators.basis import well_conditioned
+from reviewkit.estimators.covariance import infer
 from reviewkit.estimators.fit import Sample
 from reviewkit.estimators.least_squares import fit_least_squares
 from reviewkit.exhibit import Bin, BinnedFigure, Cell, Exhibit
-from reviewkit.wording import estimate
+from reviewkit.specification import Errors
+from reviewkit.wording import estimate, estimate_with_error
 
 Array = npt.NDArray[np.float64]
 
@@ -26,23 +28,22 @@ FEWEST_IN_BIN = 10
 """Rows that a bin has at least."""
 
 
-def baseline_exhibit(sample: Sample, design: Design, place: int, label: str) -> Exhibit:
+def baseline_exhibit(sample: Sample, design: Design, place: int, errors: Errors, label: str) -> Exhibit:
     """Least squares on the outcome itself; `place` is the focal column, `label` names the outcome with its unit."""
     fit = fit_least_squares(sample)
     residual_bins = binned(fit.mean, fit.residuals, MOST_BINS)
     x_left, y_left = _added_variable(sample, design, place)
     slope = float(fit.coefficients[place])
+    error = float(infer(fit, errors).std_errors[place])
+    parts = binned(fit.mean, fit.residuals, PARTS)
     added_bins = binned(x_left, y_left, MOST_BINS)
     name = design.names[place]
     return Exhibit(
         "baseline-diagnostics",
         "Least squares on the untransformed outcome: residuals, and the focal term after the others",
-        ("picture", "middle of part", "mean", "10 % point", "90 % point", "rows"),
-        (
-            *_rows("residual against fitted", binned(fit.mean, fit.residuals, PARTS)),
-            *_rows(f"added variable, {name}", binned(x_left, y_left, PARTS)),
-        ),
-        _sentence(residual_bins, name, slope),
+        ("picture", "fitted, middle of part", "mean", "10 % point", "90 % point", "rows"),
+        _rows("residual against fitted", parts),
+        _sentence(parts, name, estimate_with_error(slope, error)),
         (
             BinnedFigure(f"fitted {label}", f"residual of {label}", residual_bins, (0.0, 0.0)),
             BinnedFigure(f"{name}, given the other terms", f"{label}, given the other terms", added_bins, (0.0, slope)),
@@ -87,14 +88,14 @@ def _rows(picture: str, bins: tuple[Bin, ...]) -> tuple[tuple[Cell, ...], ...]:
     return tuple((picture, each.x, each.middle, each.low, each.high, each.rows) for each in bins)
 
 
-def _sentence(bins: tuple[Bin, ...], name: str, slope: float) -> str:
-    told = f"Least squares on the untransformed outcome gives {estimate(slope)} for {name}."
+def _sentence(bins: tuple[Bin, ...], name: str, slope: str) -> str:
+    told = f"Least squares on the untransformed outcome gives {slope} for {name}, in the outcome's unit."
     if len(bins) < 3:
         return f"{told} There are too few rows to draw residuals."
     first, last = bins[0], bins[-1]
     middle = float(np.mean([each.middle for each in bins[1:-1]]))
     return (
-        f"{told} From the lowest to the highest fitted values the 10 to 90 % range of the residuals goes from "
-        f"{estimate(first.high - first.low)} to {estimate(last.high - last.low)}; their mean is "
+        f"{told} From the lowest to the highest fifth of fitted values, the 10 to 90 % range of the residuals "
+        f"goes from {estimate(first.high - first.low)} to {estimate(last.high - last.low)}; their mean is "
         f"{estimate(first.middle)} at the low end, {estimate(middle)} between, {estimate(last.middle)} at the high end."
     )

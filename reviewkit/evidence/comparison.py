@@ -5,7 +5,7 @@ import math
 from reviewkit.comparison import Comparison, Kind, Verdict
 from reviewkit.exhibit import Cell, Exhibit, Interval, IntervalFigure
 from reviewkit.implied import Scale
-from reviewkit.wording import estimate, interval, percent
+from reviewkit.wording import estimate, interval, percent, size_percent
 
 WIDEST_BOUND = 50.0
 """Per cent beyond which a bound says little; common practice, no source."""
@@ -37,7 +37,7 @@ def _rows(each: Comparison) -> list[tuple[Cell, ...]]:
     """The two numbers, their difference, and the two bounds, a line each."""
     if each.submitted is None or each.scale is None:
         return [(each.term, f"no comparison: {each.why}", None, None, None)]
-    side = "submitted" if each.kind is Kind.MODEL else "submitted coefficient as read"
+    side = "submitted" if each.kind is Kind.MODEL else "submitted coefficient, read as in a plain log model"
     own = "" if each.rows == "common" else ", each model's own rows"
     scale = SCALE_WORDS[each.scale]
     rows: list[tuple[Cell, ...]] = [
@@ -45,6 +45,8 @@ def _rows(each: Comparison) -> list[tuple[Cell, ...]]:
         (each.term, f"alternative, {scale}{own}", each.alternative, *(each.alternative_interval or (None, None))),
         (each.term, "difference", each.difference, *(each.interval or (None, None))),
     ]
+    if each.relative_percent is not None and each.relative_interval is not None:
+        rows.append((each.term, "difference, percent of submitted", each.relative_percent, *each.relative_interval))
     bounds = (
         ("percent within which they agree", each.agree_within_percent),
         ("percent by which they differ at least", each.differ_by_at_least_percent),
@@ -73,7 +75,11 @@ def comparison_sentence(each: Comparison) -> str:
     """What the numbers of one comparison say, with the bound; never that the two agree without it."""
     if each.submitted is None or each.alternative is None or each.scale is None:
         return f"For {each.term}, no comparison, since {(each.why or 'there is none').rstrip('.')}."
-    side = "the submitted model implies" if each.kind is Kind.MODEL else "the coefficient, as read, says"
+    side = (
+        "the submitted model implies"
+        if each.kind is Kind.MODEL
+        else "the coefficient, read as in a plain log model, says"
+    )
     told = f"For {each.term}, {side} {_told(each, each.submitted, each.submitted_interval)}, "
     told += f"the alternative {_told(each, each.alternative, each.alternative_interval)}"
     return f"{told}; {verdict_words(each)}."
@@ -83,14 +89,15 @@ def verdict_words(each: Comparison) -> str:
     """The conclusion in words, with the bounds that the data put on the difference."""
     if each.conclusion is None:
         return f"no conclusion is drawn: {each.why}"
-    bound, least = each.agree_within_percent, each.differ_by_at_least_percent
+    bound = each.agree_within_percent
     if each.conclusion is Verdict.AGREES and bound is not None:
         return f"they agree within {percent(bound)} of {_submitted(each)}"
-    if each.excludes_zero and least is not None:
-        amount = (
-            f"between {percent(least)} and {percent(bound)}" if bound is not None else f"at {percent(least)} or more"
-        )
-        words = f"they differ, by an amount that the data put {amount} of {_submitted(each)}"
+    if each.excludes_zero and each.relative_percent is not None and each.relative_interval is not None:
+        smallest, largest = sorted(abs(end) for end in each.relative_interval)
+        words = f"they differ by {size_percent(each.relative_percent)} of {_submitted(each)}, an amount that the data "
+        words += f"put between {percent(smallest)} and {percent(largest)}"
+    elif each.excludes_zero:
+        words = "they differ, by an amount that is no stable share of the submitted number, since that may be zero"
     elif bound is not None and bound <= WIDEST_BOUND:
         words = f"we found no sign of a difference; the data bound it at {percent(bound)} of {_submitted(each)}"
     else:

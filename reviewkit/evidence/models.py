@@ -54,7 +54,8 @@ def agreement_sentence(agreement: tuple[Agreement, ...]) -> str:
     for each in agreement:
         for what, holds in (("estimate", each.estimate), ("error", each.std_error)):
             if holds is not None:
-                under = f" (met with {each.error_under})" if what == "error" and each.error_under else ""
+                under = f" (met with errors {joined(each.error_under, 'or')})" if each.error_under else ""
+                under = under if what == "error" else ""
                 (met if holds else missed).append(f"{what} of {each.term}{under}")
     parts = [f"to the printed digits: {joined(met)}"] if met else []
     parts += [f"not to the printed digits: {joined(missed)}"] if missed else []

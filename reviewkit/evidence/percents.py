@@ -23,10 +23,16 @@ def percent_exhibit(submitted: ModelTable, alternative: ModelTable | None, focus
             "why none",
         ),
         rows,
-        f"A percent is 100 · (exp(b) - 1), its interval the transformed interval of b. {GEOMETRIC}"
-        if read
-        else "No focal coefficient has a reading in percent; the reason stands beside each.",
+        _sentence(rows) if read else "No focal coefficient has a reading in percent; the reason stands beside each.",
     )
+
+
+def _sentence(rows: tuple[tuple[Cell, ...], ...]) -> str:
+    told = (
+        "A percent is 100 · (exp(b) - 1), its interval the transformed interval of b by the model's own errors; the "
+        "intervals of a comparison are computed in another way and can be a little wider."
+    )
+    return f"{told} {GEOMETRIC}" if any(row[5] is not None for row in rows) else told
 
 
 def _rows(table: ModelTable, name: str) -> list[tuple[Cell, ...]]:
@@ -43,7 +49,7 @@ def _rows(table: ModelTable, name: str) -> list[tuple[Cell, ...]]:
             found.percent,
             low,
             high,
-            found.kennedy_percent,
+            found.kennedy_percent if table.estimator == "ols" else None,
             found.minimum_variance_percent,
             found.percent_why_not,
         )

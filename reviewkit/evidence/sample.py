@@ -5,6 +5,7 @@ import numpy.typing as npt
 
 from reviewkit.design_matrix import Design
 from reviewkit.exhibit import BarFigure, Cell, Exhibit
+from reviewkit.implied import Focus
 from reviewkit.model_table import ModelTable
 from reviewkit.wording import counted, joined, number, share
 
@@ -14,10 +15,11 @@ FEWEST_IN_CLASS = 10
 """Rows under which classes of the outcome are put together, so that no single row shows."""
 
 
-def sample_exhibit(design: Design, tables: tuple[ModelTable, ModelTable | None], label: str) -> Exhibit:
+def sample_exhibit(design: Design, tables: tuple[ModelTable, ModelTable | None], label: str, focus: Focus) -> Exhibit:
     """Rows used and left out, zeros, distinct values and quartiles of the outcome.
 
-    `design` holds every usable row, also those that one model leaves out; `label` names the outcome with its unit.
+    `design` holds every usable row, also those that one model leaves out; `label` names the outcome with its unit;
+    for a two-valued `focus` both groups are described.
     """
     y, table = design.y, tables[0]
     rows: list[tuple[Cell, ...]] = [("rows in the table", design.table_rows)]
@@ -34,6 +36,7 @@ def sample_exhibit(design: Design, tables: tuple[ModelTable, ModelTable | None],
     rows += _quartiles("quartile", y)
     if zeros:
         rows += _quartiles("quartile of values above zero", y[y > 0])
+    rows += _by_group(design, focus)
     return Exhibit(
         "sample",
         f"Sample and outcome: {label}",
@@ -53,6 +56,24 @@ def _quartiles(name: str, y: Array) -> list[tuple[Cell, ...]]:
         (name.replace("quartile", "median"), float(second)),
         (f"third {name}", float(third)),
     ]
+
+
+def _by_group(design: Design, focus: Focus) -> list[tuple[Cell, ...]]:
+    """Rows, zeros, mean, and mean above zero of both groups; none where a group is too small to be described."""
+    if focus.values is None or focus.column is None:
+        return []
+    groups = [(value, design.y[design.columns[focus.column] == value]) for value in focus.values]
+    if min(part.size for _, part in groups) < FEWEST_IN_CLASS:
+        return []
+    rows: list[tuple[Cell, ...]] = []
+    for value, part in groups:
+        name = f"{focus.column} = {value if isinstance(value, str) else number(value)}"
+        positive = part[part > 0]
+        rows += [(f"{name}: rows", int(part.size)), (f"{name}: mean", float(part.mean()))]
+        if (design.y == 0).any():
+            rows.append((f"{name}: zeros, percent", 100 * float((part == 0).mean())))
+            rows.append((f"{name}: mean above zero", float(positive.mean()) if positive.size else None))
+    return rows
 
 
 def _used(tables: tuple[ModelTable, ModelTable | None]) -> list[tuple[str, int]]:

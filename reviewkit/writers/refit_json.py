@@ -83,7 +83,7 @@ def _agreement(found: Agreement) -> dict[str, Any]:
     return {
         "estimate_agrees": found.estimate,
         "std_error_agrees": found.std_error,
-        "std_error_agrees_under": found.error_under,
+        "std_error_agrees_under": " or ".join(found.error_under) or None,
     }
 
 
