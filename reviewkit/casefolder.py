@@ -240,9 +240,10 @@ def read_proposals(case: CaseFolder) -> tuple[Fact, ...]:
         return tuple(fact_from(each) for each in _read_json(case.path / PROPOSALS, {"facts": []})["facts"])
 
 
-def save_columns(case: CaseFolder, columns: Json, sha256: str) -> None:
+def save_columns(case: CaseFolder, columns: Json, sha256: str, remarks: tuple[str, ...] = ()) -> None:
     """Keep what the columns of the data hold, so that questions need not read the file again."""
-    _save_json(case.path / COLUMNS, {"format": FORMAT, "sha256": sha256, "columns": columns})
+    content = {"format": FORMAT, "sha256": sha256, "columns": columns, "remarks": list(remarks)}
+    _save_json(case.path / COLUMNS, content)
 
 
 def read_columns(case: CaseFolder) -> Json:

@@ -91,7 +91,7 @@ def interview(
     folder, book = casefolder.open_case(case), None
     with casefolder.working_in(folder):
         if answers is not None:
-            count = unattended.take_answers(folder, answers)
+            count = unattended.take_answers(folder, answers, _aside)
             _aside(f"{count} answers taken from {answers.name}.")
         else:
             screen = terminal.screen(plain, as_json)
@@ -142,6 +142,7 @@ def refit(
             estimated = review.reestimate_file(case_or_spec, progress)
         findings = review.findings_of(estimated)
         _show_refit(estimated, findings, as_json, plain)
+        _fail_without_alternative(estimated)
         _alert(findings, alert_on)
         return
     folder = casefolder.open_case(case_or_spec)
@@ -151,13 +152,14 @@ def refit(
     _show_refit(estimated, looked.findings, as_json, plain)
     if not as_json:
         _aside(f"Kept in {_shown(folder.path / casefolder.RESULTS)}. Next: {review.next_step_of(looked)}")
+    _fail_without_alternative(estimated)
     _alert(looked.findings, alert_on)
 
 
 @app.command()
 def draft(
     case: Case,
-    formats: Annotated[str, typer.Option("--as", help="formats, separated by commas")] = "docx,md,txt",
+    formats: Annotated[str, typer.Option("--as", help="formats, separated by commas: docx, md, txt, html, json")] = "docx,md,txt",
     request: Annotated[bool, typer.Option(help="instead, a short letter asking for what most points wait on")] = False,
     as_json: Json = False,
     plain: Plain = False,
@@ -255,14 +257,13 @@ def check_rules(
 
 
 def _after(looked: "Review", as_json: bool) -> None:
-    from reviewkit import overview, review
-    from reviewkit.rules import State
+    from reviewkit import overview
 
     if as_json:
         _give(overview.overview_json(looked))
         return
-    print(f"Points raised: {len(looked.in_state(State.RAISED))}. Open: {len(looked.in_state(State.OPEN))}.")
-    print(f"Next: {review.next_step_of(looked)}")
+    for line in overview.summary(looked):
+        print(line)
 
 
 def _alert(findings: "tuple[Finding, ...]", alert_on: AlertOn) -> None:
@@ -272,6 +273,12 @@ def _alert(findings: "tuple[Finding, ...]", alert_on: AlertOn) -> None:
     raised = max((weights[each.importance.value] for each in findings if each.state is State.RAISED), default=0)
     if alert_on is not AlertOn.NEVER and raised >= weights[alert_on.value]:
         raise typer.Exit(1)
+
+
+def _fail_without_alternative(estimated: Any) -> None:
+    """Exit status 3 where an alternative was wanted and could not be estimated; the rest was written."""
+    if estimated.alternative_why_not and estimated.specification.estimator != "poisson":
+        raise typer.Exit(FAILED)
 
 
 def _show_refit(estimated: Any, findings: "tuple[Finding, ...]", as_json: bool, plain: bool) -> None:

@@ -8,7 +8,7 @@ from pathlib import Path
 from reviewkit import casefolder, drafting, review, shipped, unattended
 from reviewkit.casefolder import Input
 from reviewkit.refusals import Refusal
-from reviewkit.screen import now_and_then
+from reviewkit.screen import telling
 
 STUDY = "study.toml"
 
@@ -45,9 +45,10 @@ def _answer_and_draft(
     case: casefolder.CaseFolder, answers: Path, name: str, say: Callable[[str], None]
 ) -> tuple[Path, ...]:
     with casefolder.working_in(case):
-        say(f"{name}: interview, {unattended.take_answers(case, answers)} answers from {answers.name}")
+        say(f"{name}: interview, {unattended.take_answers(case, answers, say)} answers from {answers.name}")
         if review.specification_of(case) is not None:
             say(f"{name}: refit")
-            review.refit(case, progress=now_and_then(lambda text: say(f"{name}: {text}")))
+            with telling(lambda text: say(f"{name}: {text}")) as tell:
+                review.refit(case, progress=tell)
     say(f"{name}: draft")
     return tuple(path for path, _ in drafting.draft(case.path))

@@ -11,7 +11,8 @@ from reviewkit.printed import Printed
 from reviewkit.prompts import Choice, Form, Prompt
 from reviewkit.records import Json
 from reviewkit.rules import Importance, Rule, RuleBook, State
-from reviewkit.specifying import DataColumn, Specifying, next_step
+from reviewkit.specification_parts import DataColumn, Specifying
+from reviewkit.specifying import next_step
 from reviewkit.vocabulary import FactDefinition, Kind
 from reviewkit.wording import percent, share, text
 

@@ -1,9 +1,10 @@
 """Asks one question at a time: what a reply leads to, and what is written down before the next question."""
 
+import re
 from dataclasses import dataclass, replace
 from pathlib import Path
 
-from reviewkit import casefolder, review
+from reviewkit import casefolder, data_columns, review
 from reviewkit.answers import SPECIFYING, Act, Entry, standing_entries
 from reviewkit.casefolder import CaseFolder, Input
 from reviewkit.decisions import agree, decide
@@ -28,16 +29,18 @@ from reviewkit.screen import (
     LIST_AT_ONCE,
     Screen,
     explain,
-    now_and_then,
     show_choice,
     show_choices,
     show_prompt,
+    telling,
 )
 from reviewkit.specifying import next_step, problem_with
 from reviewkit.wording import counted
 
 TRIAGE_AFTER = 5
 """Answers after which it is said once how things stand."""
+SHOW_AGAIN_AFTER = 2
+"""Replies in a row that were of no use, after which the choices are shown again."""
 
 
 class Left(Exception):
@@ -143,15 +146,47 @@ def _policy_answer(prompt: Prompt, screen: Screen) -> str:
 def _step(session: Session, prompt: Prompt) -> Session:
     """Ask one question until something is written down."""
     show_prompt(prompt, session.screen)
+    unclear = 0
     while True:
-        reply = read_reply(prompt, session.screen.read("> "))
+        typed = session.screen.read("> ")
+        reply = read_reply(prompt, typed)
+        unclear = unclear + 1 if isinstance(reply, Unclear) else 0
+        if unclear == SHOW_AGAIN_AFTER:
+            show_choices(prompt.choices, session.screen, LIST_AT_ONCE)
+            unclear = 0
         try:
-            done = _taken(session, prompt, reply)
+            done = _pasted(session, prompt, typed, reply) or _taken(session, prompt, reply)
         except Refusal as refusal:
             session.screen.say(refusal.message(), "  ")
             continue
         if done is not None:
             return done
+
+
+def _pasted(session: Session, prompt: Prompt, typed: str, reply: Reply) -> Session | None:
+    """A line that fits a model is taken at any question about the model, not only where it is asked for."""
+    name = prompt.name.removeprefix(SPECIFYING)
+    if name in (prompt.name, "line") or not _is_model_line(typed) or Path(typed.strip()).exists():
+        return None
+    if prompt.form is not Form.TEXT and isinstance(reply, Answered) and not re.search("[,~]", typed):
+        return None  # names of columns
+    session.screen.faint("A line that fits a model:", "  ")
+    return _specified(session, replace(prompt, name=f"{SPECIFYING}line"), typed.strip())
+
+
+def _is_model_line(typed: str) -> bool:
+    """Whether a reply names estimator, outcome and terms, as only a regression line does."""
+    if not re.search(r"\w[\s(].*\w", typed):
+        return False
+    from reviewkit.readers.model_lines import read_model_line
+
+    try:
+        understood = read_model_line(typed).understood
+    except Refusal:
+        return False
+    model = understood.get("model", {})
+    named = understood.get("outcome", {}).get("column") and model.get("terms")
+    return bool(named and ("estimator" in model or "~" in typed))
 
 
 def _taken(session: Session, prompt: Prompt, reply: Reply) -> Session | None:
@@ -251,8 +286,10 @@ def _data_given(session: Session, typed: str) -> tuple[Session, str]:
     interview, screen = session.interview, session.screen
     path = session.case.beside(typed) if typed in interview.files else Path(typed.strip("'\"")).expanduser()
     screen.faint(f"reading {path.name} …", "  ")
-    columns = review.describe_data(session.case, path)
+    columns = data_columns.describe(session.case, path)
     screen.faint(f"{len(columns)} columns", "  ")
+    for remark in data_columns.remarks(session.case):
+        screen.say(remark, "  ")
     case = casefolder.giving(session.case, Input.DATA, path)
     place = casefolder.relative(path, case.path)
     return Session(case, replace(interview, columns=columns, files=(place,)), screen), place
@@ -267,6 +304,8 @@ def _understood(line: str, screen: Screen) -> Json:
         screen.say(shown, "  understood: ", "              ")
     for left in read.not_understood:
         screen.say(left, "  not understood: ", "                  ")
+    for hint in read.hints:
+        screen.say(hint, "  note: ", "        ")
     return read.understood
 
 
@@ -302,7 +341,8 @@ def _finished(session: Session) -> Session:
 def _reestimate(case: CaseFolder, screen: Screen) -> None:
     """Re-estimate between two questions; what cannot be estimated is said, and the questions go on."""
     try:
-        estimated = review.refit(case, progress=now_and_then(lambda text: screen.faint(text, "  ")))
+        with telling(lambda text: screen.faint(text, "  ")) as tell:
+            estimated = review.refit(case, progress=tell)
     except Refusal as refusal:
         screen.say(f"Not re-estimated. {refusal.message()}", "  ")
         return

@@ -9,9 +9,14 @@ from reviewkit.interview import shown_value, where_from
 from reviewkit.records import Json, fact_json
 from reviewkit.review import POLICY_QUESTIONS, Review, needs_refit, next_step_of, specification_of
 from reviewkit.rules import Finding, Importance, State
+from reviewkit.wording import counted
 
 MOST_MISSING = 3
 """Facts named behind an open point."""
+
+
+MOST_RAISED = 8
+"""Points named in a summary."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -43,6 +48,17 @@ def overview(review: Review, all_facts: bool = False) -> tuple[Part, ...]:
         Part("Next", (next_step_of(review),)),
     )
     return tuple(each for each in parts if each.lines)
+
+
+def summary(review: Review) -> tuple[str, ...]:
+    """What an interview found, in a few lines: the points raised, how many are open, the next command."""
+    raised, waiting = _by_importance(review.in_state(State.RAISED)), review.in_state(State.OPEN)
+    lines = [f"Raised so far: {counted(len(raised), 'point')}{'.' if not raised else ':'}"]
+    lines += [f"  {each.importance.value}: {each.rule.title}" for each in raised[:MOST_RAISED]]
+    lines += [f"  and {len(raised) - MOST_RAISED} more"] if len(raised) > MOST_RAISED else []
+    by_data = sum(not any(_is_asked(review, name) for name in each.missing) for each in waiting)
+    lines.append(f"Open: {len(waiting)}" + (f", {by_data} of them for want of data." if by_data else "."))
+    return (*lines, f"Next: {next_step_of(review)}")
 
 
 def overview_json(review: Review) -> Json:

@@ -1,23 +1,25 @@
 """A review from its beginning to the notes, as functions; the command line and the screens only call these."""
 
 from collections.abc import Callable, Mapping
-from dataclasses import asdict, dataclass, replace
+from dataclasses import dataclass, replace
 from pathlib import Path
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING
 
-from reviewkit import casefolder, safekeeping, shipped
+from reviewkit import casefolder, data_columns, safekeeping, shipped
 from reviewkit.answers import SPECIFYING, Entry
 from reviewkit.casefolder import CaseFolder, Input, Policy
 from reviewkit.decisions import Disagreement, decide, disagreements, next_question
 from reviewkit.exhibit import Exhibit
-from reviewkit.facts import Fact, Facts, Source, SourceKind, Standing
+from reviewkit.facts import Fact, Facts
 from reviewkit.interview import Interview, facts_of, specifying
 from reviewkit.records import Json, exhibit_from, exhibit_json, fact_from, fact_json
 from reviewkit.refusals import Refusal
 from reviewkit.rulefiles import read_rule_book
 from reviewkit.rules import Finding, RuleBook, State
 from reviewkit.specification import Specification, read_specification, specification_from, specification_text
-from reviewkit.specifying import DataColumn, next_step, specification_values
+from reviewkit.specification_parts import specification_values
+from reviewkit.specified import covariate_fact, specification_facts
+from reviewkit.specifying import next_step
 from reviewkit.wording import counted
 
 if TYPE_CHECKING:
@@ -98,7 +100,8 @@ def read_inputs(case: CaseFolder) -> tuple[CaseFolder, tuple[str, ...]]:
             said += found
         finally:
             if (data := case.place(Input.DATA)) is not None:
-                said.append(f"{data.name}: {counted(len(describe_data(case, data)), 'column')} read.")
+                said.append(f"{data.name}: {counted(len(data_columns.describe(case, data)), 'column')} read.")
+                said += data_columns.remarks(case)
     if case.given(Input.PACKAGE) is not None:
         said.append("The package was noted; this version does not read packages yet.")
     return case, tuple(said)
@@ -125,37 +128,12 @@ def _read_manuscript(case: CaseFolder, path: Path) -> tuple[CaseFolder, int]:
     return case, len(found)
 
 
-def describe_data(case: CaseFolder, path: Path) -> tuple[DataColumn, ...]:
-    """What the columns of the data hold; read once, then kept."""
-    sha256 = safekeeping.file_checksum(path)
-    kept = casefolder.read_columns(case)
-    if kept["sha256"] != sha256 or not kept["columns"]:
-        from reviewkit.readers.columns import describe_columns
-        from reviewkit.readers.tables import read_table
-
-        columns = [asdict(_data_column(each)) for each in describe_columns(read_table(path))]
-        casefolder.save_columns(case, columns, sha256)
-        kept = {"columns": columns}
-    return tuple(DataColumn(**each) for each in kept["columns"])
-
-
-def _data_column(described: Any) -> DataColumn:
-    from reviewkit.wording import share
-
-    known = max(described.rows - described.missing, 1)
-    parts = [described.label, str(described.kind)]
-    parts += [f"{share(described.zeros / known)} zeros"] if described.zeros and described.kind != "two-valued" else []
-    parts += [f"{described.missing} missing"] if described.missing else []
-    is_text = isinstance(described.smallest, str)
-    return DataColumn(described.name, ", ".join([*filter(None, parts), *described.hints]), is_text, described.is_number)
-
-
 # --- where a case stands ------------------------------------------------------------------------------------------
 
 
-def rule_book(house_folders: tuple[Path, ...] = ()) -> RuleBook:
-    """The rules that come with the program, and those of house folders."""
-    return read_rule_book(shipped.rules_folder(), house_folders)
+def rule_book(house_folders: tuple[Path, ...] = (), examples: bool = False) -> RuleBook:
+    """The rules that come with the program, and those of house folders; with their examples where they are shown."""
+    return read_rule_book(shipped.rules_folder(), house_folders, examples)
 
 
 def look(folder: Path, book: RuleBook | None = None) -> Review:
@@ -170,21 +148,12 @@ def given_facts(case: CaseFolder, results: Results | None) -> Facts:
     """What machines found, and what the specification's author typed, linked from claim to model to data."""
     facts = Facts(casefolder.read_proposals(case)).linked(CLAIM, MAIN).linked(MAIN, DATA)
     specification = specification_of(case)
-    typed = printed_facts(specification) if specification is not None else ()
     current = results.facts if results is not None and not results.is_old else ()
-    return facts.adding(typed).adding(current)
-
-
-def printed_facts(spec: Specification) -> tuple[Fact, ...]:
-    """The printed figures of a specification as facts; a person typed them there."""
-    source = Source(SourceKind.SPECIFICATION, "specification")
-    figures: list[tuple[str, Any, str]] = [("n.printed", spec.printed_n, MAIN)]
-    first = dict(spec.printed_terms).get(spec.focus[0]) if spec.focus else None
-    if first is not None:
-        figures += [("claim.coefficient", first.estimate, CLAIM), ("claim.std_error", first.std_error, CLAIM)]
-    return tuple(
-        Fact(name, value, Standing.SETTLED, source, subject) for name, value, subject in figures if value is not None
-    )
+    if specification is None:
+        return facts.adding(current)
+    kinds = {each.name: each.kind for each in data_columns.known(case)}
+    written = specification_facts(specification, MAIN, CLAIM)
+    return facts.adding(written).adding(covariate_fact(specification, kinds, CLAIM)).adding(current)
 
 
 def open_interview(folder: Path, only_major: bool = False, again: tuple[str, ...] = ()) -> tuple[CaseFolder, Interview]:
@@ -192,7 +161,7 @@ def open_interview(folder: Path, only_major: bool = False, again: tuple[str, ...
     case, book = casefolder.open_case(folder), rule_book()
     entries = casefolder.read_entries(case)
     data = case.place(Input.DATA)
-    columns = tuple(DataColumn(**each) for each in casefolder.read_columns(case)["columns"])
+    columns = data_columns.known(case)
     return case, Interview(
         given_facts(case, read_results(case)),
         book,
@@ -248,11 +217,19 @@ def write_specification(case: CaseFolder, spec: Specification) -> bool:
     return casefolder.write_or_keep(case, case.specification(spec.name), specification_text(spec).encode())
 
 
+def load_numbers() -> None:
+    """Load what estimates and draws, so that only the work itself counts as time taken."""
+    from reviewkit.readers import tables  # noqa: F401
+    from reviewkit.reestimation import reestimate  # noqa: F401
+    from reviewkit.writers import pictures  # noqa: F401
+
+
 def reestimate_file(path: Path, progress: Progress | None = None) -> "Reestimation":
     """Re-estimate a lone specification file; its data lie beside it."""
     spec = read_specification(path)
     table = _table(path.parent / spec.data, progress)
-    return _reestimated(spec, table, progress)
+    estimated = _reestimated(spec, table, progress)
+    return replace(estimated, warnings=(*table.remarks, *estimated.warnings))
 
 
 def refit(case: CaseFolder, model: str = "main", progress: Progress | None = None) -> "Reestimation":
@@ -281,7 +258,9 @@ def refit(case: CaseFolder, model: str = "main", progress: Progress | None = Non
 def findings_of(estimated: "Reestimation") -> tuple[Finding, ...]:
     """What the rules make of a re-estimation alone, with nothing known of the paper but its printed figures."""
     linked = Facts().linked(CLAIM, MAIN).linked(MAIN, DATA)
-    return decide(linked.adding(printed_facts(estimated.specification)).adding(estimated.facts), rule_book())
+    return decide(
+        linked.adding(specification_facts(estimated.specification, MAIN, CLAIM)).adding(estimated.facts), rule_book()
+    )
 
 
 def _table(path: Path, progress: Progress | None) -> "Table":

@@ -12,7 +12,7 @@ def lines() -> tuple[str, ...]:
     """All rules by topic, one a line."""
     said: list[str] = []
     topic = ""
-    for rule in rule_book().rules:
+    for rule in rule_book(examples=True).rules:
         if rule.topic != topic:
             topic = rule.topic
             said += ([""] if said else []) + [topic]
@@ -24,14 +24,15 @@ def listed() -> Json:
     """The same as one object."""
     keys = ("name", "topic", "title", "subject")
     rules = [
-        {**{key: getattr(rule, key) for key in keys}, "importance": rule.importance.value} for rule in rule_book().rules
+        {**{key: getattr(rule, key) for key in keys}, "importance": rule.importance.value}
+        for rule in rule_book(examples=True).rules
     ]
     return {"format": 1, "rules": rules}
 
 
 def rule_lines(name: str) -> tuple[str, ...]:
     """One rule in full."""
-    book = rule_book()
+    book = rule_book(examples=True)
     rule = book.rule(name)
     parts = (
         ("title", rule.title),
@@ -55,7 +56,7 @@ def rule_lines(name: str) -> tuple[str, ...]:
 
 def shown(name: str) -> Json:
     """One rule as an object."""
-    rule = rule_book().rule(name)
+    rule = rule_book(examples=True).rule(name)
     texts = {
         key: getattr(rule, key) for key in ("name", "topic", "title", "subject", "says", "why", "best_case", "request")
     }
@@ -77,7 +78,7 @@ def checked(folder: Path) -> tuple[str, tuple[str, ...]]:
     """Read a house folder over the book and run the examples of its rules: a summary, and what is wrong."""
     if not folder.is_dir():
         raise Refusal(folder.name, "there is no such folder")
-    book = rule_book((folder,))
+    book = rule_book((folder,), examples=True)
     own = {path.stem for path in folder.rglob("*.toml")}
     rules = [rule for rule in book.rules if rule.name in own]
     wrong = [message for rule in rules for message in _failing(rule, book)]

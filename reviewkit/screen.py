@@ -1,9 +1,10 @@
 """Words on a terminal, a pipe or a screen reader: lines only, folded to the width, nothing redrawn."""
 
 import textwrap
-import time
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
+from contextlib import contextmanager
 from dataclasses import dataclass
+from threading import Event, Thread
 
 from reviewkit.interview import Interview, facts_of, shown_value, where_from
 from reviewkit.prompts import Choice, Prompt
@@ -47,17 +48,25 @@ class Screen:
             self.quiet(line)
 
 
-def now_and_then(say: Callable[[str], None], seconds: float = 2.0) -> Callable[[str], None]:
-    """Passes progress on at most every few seconds, and not at all where everything is over sooner."""
-    last = time.monotonic()
+@contextmanager
+def telling(say: Callable[[str], None], seconds: float = 2.0) -> Iterator[Callable[[str], None]]:
+    """Says what is being done once it has taken that long, and then every so often; shorter work passes in silence."""
+    latest, over = [""], Event()
 
-    def tell(text: str) -> None:
-        nonlocal last
-        if time.monotonic() - last >= seconds:
-            last = time.monotonic()
-            say(f"{text} …")
+    def tell() -> None:
+        said = ""
+        while not over.wait(seconds):
+            if latest[0] != said:
+                said = latest[0]
+                say(f"{said} …")
 
-    return tell
+    teller = Thread(target=tell, daemon=True)
+    teller.start()
+    try:
+        yield lambda text: latest.__setitem__(0, text)
+    finally:
+        over.set()
+        teller.join()
 
 
 def show_prompt(prompt: Prompt, screen: Screen) -> None:

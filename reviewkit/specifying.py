@@ -1,60 +1,18 @@
-"""Builds a specification from answers: which question comes next, and the tables that the answers make."""
+"""Builds a specification from answers: which question comes next, and whether the answers hold together."""
 
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass
 from typing import Any
 
 from reviewkit.answers import SPECIFYING
 from reviewkit.expressions import columns_of, read_terms
-from reviewkit.facts import Value
-from reviewkit.printed import Printed
 from reviewkit.prompts import Choice, Form, Prompt
 from reviewkit.refusals import Refusal
-from reviewkit.specification import ERROR_TYPES, ErrorKind, Transform, specification_from
+from reviewkit.specification import ERROR_TYPES, ErrorKind, Estimator, Transform, specification_from
+from reviewkit.specification_parts import Specifying, specification_values
 
 MODEL = "model:main"
 A_TERM_TO_COME = "x"
 """Stands for the terms while only what comes before them was answered."""
-
-
-@dataclass(frozen=True, slots=True)
-class DataColumn:
-    """What a list of columns shows of one of them."""
-
-    name: str
-    detail: str = ""
-    is_text: bool = False
-    may_be_outcome: bool = True
-
-
-@dataclass(frozen=True, slots=True)
-class Specifying:
-    """How far a specification has come."""
-
-    answers: Mapping[str, Value]
-    """By short name: `data`, `outcome`, …"""
-    understood: Mapping[str, Any]
-    """Tables of a specification that a pasted line gave."""
-    columns: tuple[DataColumn, ...] = ()
-    files: tuple[str, ...] = ()
-    """Data files that the case was given."""
-
-    def has(self, table: str, key: str) -> bool:
-        """Whether the pasted line settled that key."""
-        return key in self.understood.get(table, {})
-
-    def part(self, table: str, key: str) -> Any:
-        """What the pasted line says of that key."""
-        return self.understood.get(table, {}).get(key)
-
-    def outcome_has(self, key: str) -> bool:
-        """Whether the line settled that key of the outcome; not where another transform was chosen since."""
-        return self.has("outcome", key) and "transform" not in self.answers
-
-    @property
-    def without_data(self) -> bool:
-        """Whether there is no data file, so that nothing can be re-estimated."""
-        return self.answers.get("data") == ""
 
 
 TRANSFORMS = {
@@ -69,6 +27,16 @@ _ERRORS = {
     ErrorKind.CLUSTER: "clustered",
     ErrorKind.CLASSICAL: "classical (the default of most programs)",
 }
+_ESTIMATORS = {
+    Estimator.OLS: "least squares",
+    Estimator.POISSON: "Poisson (quasi-maximum likelihood)",
+    Estimator.NEGBIN: "negative binomial",
+    Estimator.GAMMA: "gamma",
+    Estimator.FRACTIONAL_LOGIT: "fractional logit",
+    Estimator.BETA: "beta",
+    Estimator.LOGIT: "logit",
+    Estimator.PROBIT: "probit",
+}
 _ZEROS = {"kept": "kept, as they stand", "dropped": "left out", "replaced": "replaced by a small number"}
 
 
@@ -82,35 +50,6 @@ def next_step(state: Specifying) -> Prompt | None:
             if prompt is not None:
                 return prompt
     return None
-
-
-def specification_values(state: Specifying) -> dict[str, Any]:
-    """The tables of the specification file, as far as they are known."""
-    model = {**state.understood.get("model", {}), **_said(state, "where")}
-    model |= {
-        key: [_as_term(state, each) for each in _several(state, key)]
-        for key in ("terms", "focus")
-        if key in state.answers
-    }
-    outcome = {
-        **state.understood.get("outcome", {}),
-        **_said(state, "transform", "constant", "scale", "zeros", "replacement"),
-    }
-    outcome |= {"column": str(state.answers["outcome"])} if "outcome" in state.answers else {}
-    errors = {**state.understood.get("errors", {}), **_errors(state)}
-    if errors.get("kind") == ErrorKind.CLUSTER and not errors.get("by"):
-        del errors["kind"]  # until the next answer names the column
-    if outcome.get("zeros") == "replaced" and "replacement" not in outcome:
-        del outcome["zeros"]
-    values: dict[str, Any] = {
-        "data": state.answers.get("data", ""),
-        "outcome": outcome,
-        "model": model,
-        "errors": errors,
-    }
-    printed = _printed(state, model)
-    others = {key: each for key, each in state.understood.items() if key not in values and key != "format"}
-    return {**others, **values, **({"printed": printed} if printed else {})}
 
 
 def problem_with(state: Specifying) -> str:
@@ -156,7 +95,29 @@ def _line(state: Specifying) -> Prompt:
     )
 
 
+def _traced(state: Specifying) -> Prompt | None:
+    if state.trace is None:
+        return None
+    named = state.answers.get("outcome", state.part("outcome", "column"))
+    made = state.trace.outcome
+    zeros = {"dropped": " Its zeros were left out.", "replaced": " Its zeros were replaced by a small number."}
+    return _prompt(
+        "traced",
+        f"The data show that {named} {state.trace.sentence}.{zeros.get(made['zeros'], '')} Is that the outcome?",
+        Form.ONE,
+        choices=(
+            Choice("yes", f"yes: outcome {made['column']}, {TRANSFORMS[made['transform']]}"),
+            Choice("no", "no, I choose column and transform myself"),
+        ),
+        default="yes",
+        default_why="the numbers agree on every row",
+        explains="The outcome before its transformation is needed to fit a model of its mean beside the submitted one.",
+    )
+
+
 def _outcome(state: Specifying) -> Prompt | None:
+    if state.is_traced:
+        return None
     column, transform = state.part("outcome", "column"), state.part("outcome", "transform")
     known = {each.name for each in state.columns}
     if column in known and transform not in (None, Transform.NONE):
@@ -174,6 +135,8 @@ def _outcome(state: Specifying) -> Prompt | None:
 
 
 def _transform(state: Specifying) -> Prompt | None:
+    if state.is_traced:
+        return None
     named = state.part("outcome", "column")
     if state.part("outcome", "transform") not in (None, Transform.NONE) and "outcome" not in state.answers:
         return None
@@ -189,21 +152,21 @@ def _transform(state: Specifying) -> Prompt | None:
 
 
 def _constant(state: Specifying) -> Prompt | None:
-    if _value(state, "transform") != Transform.LOG_PLUS or state.outcome_has("constant"):
+    if state.is_traced or _value(state, "transform") != Transform.LOG_PLUS or state.outcome_has("constant"):
         return None
     question = "Which constant was added before the log?"
     return _prompt("constant", question, Form.NUMBER, default=1.0, hint="a number, in the unit of the column")
 
 
 def _scale(state: Specifying) -> Prompt | None:
-    if _value(state, "transform") != Transform.ASINH or state.outcome_has("scale"):
+    if state.is_traced or _value(state, "transform") != Transform.ASINH or state.outcome_has("scale"):
         return None
     question = "By which number was the outcome multiplied inside the inverse hyperbolic sine?"
     return _prompt("scale", question, Form.NUMBER, default=1.0, hint="1 where it was taken of the column as it stands")
 
 
 def _zeros(state: Specifying) -> Prompt | None:
-    if _value(state, "transform") != Transform.LOG or state.outcome_has("zeros"):
+    if state.is_traced or _value(state, "transform") != Transform.LOG or state.outcome_has("zeros"):
         return None
     choices = tuple(Choice(value, label) for value, label in _ZEROS.items() if value != "kept")
     question = "A zero has no logarithm. What became of rows with a zero outcome?"
@@ -213,7 +176,7 @@ def _zeros(state: Specifying) -> Prompt | None:
 
 
 def _replacement(state: Specifying) -> Prompt | None:
-    if _value(state, "zeros") != "replaced" or state.outcome_has("replacement"):
+    if state.is_traced or _value(state, "zeros") != "replaced" or state.outcome_has("replacement"):
         return None
     return _prompt(
         "replacement", "Which number stands for the zeros?", Form.NUMBER, hint="a number, in the unit of the column"
@@ -265,14 +228,33 @@ def _where(state: Specifying) -> Prompt | None:
     )
 
 
+def _estimator(state: Specifying) -> Prompt | None:
+    transform = specification_values(state)["outcome"].get("transform")
+    if state.has("model", "estimator") or (not state.understood and transform != Transform.NONE):
+        return None
+    return _prompt(
+        "estimator",
+        "How is the model estimated?" + (" The line does not settle it." if state.understood else ""),
+        Form.ONE,
+        choices=tuple(Choice(value, label) for value, label in _ESTIMATORS.items()),
+        default=Estimator.OLS.value,
+        default_why="what a regression is unless the paper says otherwise",
+        hint="a number, or the beginning of a word",
+        explains="This version re-estimates least squares and Poisson; of others it knows what you answer.",
+    )
+
+
 def _kind_of_errors(state: Specifying) -> Prompt | None:
     if state.has("errors", "kind"):
         return None
+    by_line = bool(state.understood)
     return _prompt(
         "errors",
-        "Which standard errors does the paper use?",
+        "Which standard errors does the paper use?" + (" The line does not settle it." if by_line else ""),
         Form.ONE,
         choices=tuple(Choice(value, label) for value, label in _ERRORS.items()),
+        default=ErrorKind.CLASSICAL.value if by_line else None,
+        default_why="what most programs do unless told otherwise" if by_line else "",
         hint="a number, or the beginning of a word",
         explains="Look below the table first. Where it is silent, most programs print classical errors.",
     )
@@ -308,6 +290,7 @@ def _printed_figure(name: str, what: str, optional: str) -> Callable[[Specifying
 _STEPS: Mapping[str, Callable[[Specifying], Prompt | None]] = {
     "data": _data,
     "line": _line,
+    "traced": _traced,
     "outcome": _outcome,
     "transform": _transform,
     "constant": _constant,
@@ -317,6 +300,7 @@ _STEPS: Mapping[str, Callable[[Specifying], Prompt | None]] = {
     "terms": _terms,
     "focus": _focus,
     "where": _where,
+    "estimator": _estimator,
     "errors": _kind_of_errors,
     "error_type": _type_of_errors,
     "by": _clusters,
@@ -344,45 +328,8 @@ def _value(state: Specifying, name: str) -> Any:
     return state.part("errors", "kind") if name == "errors" else state.part("outcome", name)
 
 
-def _said(state: Specifying, *names: str) -> dict[str, Any]:
-    return {name: state.answers[name] for name in names if state.answers.get(name) not in (None, "")}
-
-
-def _several(state: Specifying, name: str) -> tuple[str, ...]:
-    value = state.answers[name]
-    return value if isinstance(value, tuple) else (str(value),)
-
-
-def _as_term(state: Specifying, text: str) -> str:
-    """A bare column name as a term of the grammar; columns of text as classes."""
-    column = next((each for each in state.columns if each.name == text), None)
-    if column is None:
-        return text
-    name = text if text.isidentifier() else f"`{text}`"
-    return f"factor({name})" if column.is_text else name
-
-
 def _columns_in(term: str) -> tuple[str, ...]:
     try:
         return tuple(column for each in read_terms(term, "the line") for column in columns_of(each))
     except Refusal:
         return (term,)
-
-
-def _errors(state: Specifying) -> dict[str, Any]:
-    found: dict[str, Any] = {}
-    found |= {"kind": state.answers["errors"]} if "errors" in state.answers else {}
-    found |= {"type": state.answers["error_type"]} if "error_type" in state.answers else {}
-    return found | ({"by": list(_several(state, "by"))} if "by" in state.answers else {})
-
-
-def _printed(state: Specifying, model: Mapping[str, Any]) -> dict[str, Any]:
-    keys = ("estimate", "std_error")
-    figures = {key: _text(state.answers[key]) for key in keys if state.answers.get(key) not in (None, "")}
-    found: dict[str, Any] = {"n": _text(state.answers["n"])} if state.answers.get("n") not in (None, "") else {}
-    focus = model.get("focus") or []
-    return found | ({"terms": {focus[0]: figures}} if figures and focus else {})
-
-
-def _text(value: Value) -> str:
-    return value.text if isinstance(value, Printed) else str(value)

@@ -7,17 +7,21 @@ from collections.abc import Callable, Iterator
 from contextlib import contextmanager, suppress
 from typing import TextIO
 
-from reviewkit.screen import Screen, now_and_then
+from reviewkit import review
+from reviewkit.screen import Screen, telling
 
 
 @contextmanager
 def progress(plain: bool) -> Iterator[Callable[[str], None]]:
-    """Says what is being done: one line that changes on a terminal, elsewhere a line every few seconds."""
+    """Says what takes over two seconds: one line that changes on a terminal, elsewhere a line each."""
+    review.load_numbers()
     if is_plain(plain, sys.stderr):
-        yield now_and_then(lambda text: print(text, file=sys.stderr))
+        with telling(lambda text: print(text, file=sys.stderr)) as tell:
+            yield tell
         return
     try:
-        yield lambda text: print(f"\r\033[K{text} …", end="", file=sys.stderr, flush=True)
+        with telling(lambda text: print(f"\r\033[K{text}", end="", file=sys.stderr, flush=True)) as tell:
+            yield tell
     finally:
         print("\r\033[K", end="", file=sys.stderr, flush=True)
 

@@ -17,7 +17,9 @@ from reviewkit.prompts import Answered, Choice, Command, Commanded, Form, Matche
 from reviewkit.review import rule_book
 from reviewkit.rules import State
 from reviewkit.specification import Transform, specification_from, specification_text
-from reviewkit.specifying import DataColumn, Specifying, next_step, problem_with, specification_values
+from reviewkit.specification_parts import DataColumn, Specifying, Trace, specification_values
+from reviewkit.specified import ERROR_WORDS, ESTIMATOR_WORDS, TRANSFORM_WORDS, covariate_fact, specification_facts
+from reviewkit.specifying import next_step, problem_with
 from reviewkit.vocabulary import FactDefinition, Kind
 
 BOOK = rule_book()
@@ -371,7 +373,7 @@ def test_lists_alone_make_a_whole_specification():
 def test_a_pasted_line_leaves_only_the_rest_to_ask():
     understood = {
         "outcome": {"column": "sales", "transform": "log_plus", "constant": 1},
-        "model": {"terms": ["staff", "factor(region)"]},
+        "model": {"estimator": "ols", "terms": ["staff", "factor(region)"]},
         "errors": {"kind": "cluster", "by": ["region"]},
     }
     asked, state = specified_with({"data": "shops.csv", "line": "…", "focus": ("staff",)}, understood)
@@ -420,3 +422,136 @@ def test_an_answer_that_makes_no_specification_is_said_at_once(name, value):
 def test_latest_answers_do_not_depend_on_skips():
     entries = (Entry(Act.ANSWER, "a", value="1"), Entry(Act.SKIP, "a"))
     assert [each.value for each in latest_answers(entries)] == ["1"]
+
+
+# --- what a specification settles ------------------------------------------------------------------------------------
+
+SPECIFIED = {
+    "data": "shops.csv",
+    "outcome": {"column": "sales", "transform": "log_plus", "constant": 1},
+    "model": {"estimator": "ols", "terms": ["staff", "open"], "focus": ["staff"]},
+    "errors": {"kind": "cluster", "by": ["village"]},
+    "printed": {"n": "3,412", "terms": {"staff": {"estimate": "0.38", "std_error": "0.11"}}},
+}
+
+
+def settled_by(**changed):
+    spec = specification_from({**SPECIFIED, **changed}, "test")
+    return {
+        (each.subject, each.name): each.value
+        for each in specification_facts(spec, "model:main", "claim:main")
+        if (each.standing, each.source.kind) == (Standing.SETTLED, SourceKind.SPECIFICATION)
+    }
+
+
+def test_a_specification_settles_what_it_says():
+    found = settled_by()
+    assert found["model:main", "outcome.transform"] == "log of y plus a constant"
+    assert found["model:main", "outcome.constant"] == 1
+    assert found["model:main", "estimator"] == "least squares"
+    assert found["model:main", "errors.kind"] == "clustered"
+    assert found["model:main", "errors.cluster_level"] == ("village",)
+    assert found["model:main", "effects.unit"] == "no"
+    assert found["model:main", "n.printed"].text == "3,412"
+    assert found["claim:main", "claim.coefficient"].text == "0.38"
+    assert found["claim:main", "claim.std_error"].text == "0.11"
+
+
+def test_zeros_that_are_kept_are_left_to_the_data():
+    assert ("model:main", "outcome.zeros") not in settled_by()
+    dropped = settled_by(outcome={"column": "sales", "transform": "log", "zeros": "dropped"})
+    assert dropped["model:main", "outcome.zeros"] == "dropped"
+    assert ("model:main", "outcome.constant") not in dropped
+
+
+def test_effects_are_what_is_absorbed_and_classes_beside_the_focus():
+    model = {"estimator": "ols", "terms": ["factor(plan)", "factor(year)", "age"], "focus": ["factor(plan)"]}
+    found = settled_by(model={**model, "absorb": ["shop"]}, printed={"terms": {"factor(plan)": {"estimate": "0.2"}}})
+    assert found["model:main", "effects.absorbed"] == ("shop", "year")
+    assert ("model:main", "effects.unit") not in found
+    assert found["claim:main", "claim.coefficient"].text == "0.2"
+
+
+@pytest.mark.parametrize(
+    ("focus", "kind", "said"),
+    [
+        ("staff", "two-valued", "two-valued"),
+        ("staff", "number", "continuous"),
+        ("factor(staff)", "two-valued", "two-valued"),
+        ("factor(staff)", "whole number", "several classes"),
+        ("log(staff)", "number", "continuous, in logs"),
+        ("staff:open", "number", None),
+        ("staff", "", None),
+    ],
+)
+def test_the_kind_of_covariate_follows_from_term_and_column(focus, kind, said):
+    spec = specification_from({**SPECIFIED, "model": {"terms": [focus], "focus": [focus]}}, "test")
+    found = covariate_fact(spec, {"staff": kind}, "claim:main")
+    assert [each.value for each in found] == ([said] if said else [])
+
+
+def test_every_word_of_a_specification_is_an_option_of_its_fact():
+    for words, name in (
+        (TRANSFORM_WORDS, "outcome.transform"),
+        (ESTIMATOR_WORDS, "estimator"),
+        (ERROR_WORDS, "errors.kind"),
+    ):
+        assert set(words.values()) <= set(BOOK.vocabulary[name].options)
+
+
+TRACED = DataColumn(
+    "lnsales",
+    trace=Trace(
+        "equals log(sales + 1)", {"column": "sales", "transform": "log_plus", "constant": 1.0, "zeros": "kept"}
+    ),
+)
+LOGGED = {
+    "outcome": {"column": "lnsales", "transform": "none"},
+    "model": {"estimator": "ols", "terms": ["staff"]},
+    "errors": {"kind": "robust"},
+}
+
+
+def test_what_the_data_show_of_the_outcome_is_one_question():
+    asked, state = specified_with({"data": "x.csv", "line": "…"}, LOGGED, (*COLUMNS, TRACED))
+    assert asked == ["data", "line", "traced", "focus", "estimate", "std_error", "n"]
+    outcome = specification_from(specification_values(state), "test").outcome
+    assert (outcome.column, outcome.transform, outcome.constant) == ("sales", Transform.LOG_PLUS, 1.0)
+
+
+def test_a_trace_may_be_turned_down_and_lists_come_instead():
+    answers = {"data": "x.csv", "line": "…", "traced": "no", "outcome": "sales", "transform": "sqrt"}
+    asked, state = specified_with(answers, LOGGED, (*COLUMNS, TRACED))
+    assert asked[2:5] == ["traced", "outcome", "transform"]
+    assert specification_from(specification_values(state), "test").outcome.transform is Transform.SQRT
+
+
+def test_a_logged_column_chosen_from_the_list_is_traced_too():
+    answers = {"data": "x.csv", "line": "", "outcome": "lnsales", "terms": ("staff",), "errors": "classical"}
+    asked, state = specified_with(answers, None, (*COLUMNS, TRACED))
+    assert asked[2:5] == ["outcome", "traced", "terms"]
+    assert specification_values(state)["outcome"]["column"] == "sales"
+
+
+def test_estimator_and_errors_that_a_line_leaves_open_are_asked_for():
+    line = {"outcome": {"column": "sales", "transform": "log"}, "model": {"terms": ["staff"]}}
+    asked, state = specified_with({"data": "x.csv", "line": "…", "estimator": "poisson"}, line)
+    assert {"estimator", "errors"} <= set(asked)
+    assert specification_values(state)["model"]["estimator"] == "poisson"
+    prompts = {step.name: step for step in steps_of(line)}
+    assert all("does not settle it" in prompts[SPECIFYING + name].question for name in ("estimator", "errors"))
+    assert all(prompts[SPECIFYING + name].default_why for name in ("estimator", "errors"))
+
+
+def steps_of(understood):
+    state = Specifying({"data": "x.csv", "line": "…"}, understood, COLUMNS)
+    while (prompt := next_step(state)) is not None:
+        yield prompt
+        state = replace(state, answers={**state.answers, prompt.name.removeprefix(SPECIFYING): prompt.default})
+
+
+def test_an_untransformed_outcome_from_lists_is_not_taken_for_least_squares():
+    answers = {"data": "x.csv", "outcome": "sales", "transform": "none", "terms": ("staff",), "errors": "robust"}
+    asked, _ = specified_with(answers)
+    assert "estimator" in asked
+    assert "estimator" not in specified_with({**answers, "transform": "log"})[0]

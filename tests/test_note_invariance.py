@@ -79,7 +79,7 @@ def notes(folder: Path, frame: pd.DataFrame, names: dict[str, str], errors: str 
     case, _ = review.begin(folder / "case", {Input.DATA: folder / "trips.csv"})
     case, _ = review.read_inputs(case)
     with casefolder.working_in(case):
-        unattended.take_answers(case, folder / "answers.toml")
+        unattended.take_answers(case, folder / "answers.toml", print)
         review.refit(case)
     drafting.draft(case.path, ("txt",))
     found = {stem: (case.path / f"{stem}.txt").read_text("utf-8") for stem in ("to-authors", "to-editor")}

@@ -5,6 +5,7 @@ import re
 import shutil
 import subprocess
 import sys
+import threading
 import time
 from pathlib import Path
 
@@ -14,7 +15,7 @@ from reviewkit import casefolder, review
 from reviewkit.answers import Act
 from reviewkit.casefolder import Input, Policy
 from reviewkit.interview_screen import ask_policy, closing, hold
-from reviewkit.screen import Screen, now_and_then
+from reviewkit.screen import Screen, telling
 from reviewkit.shipped import demo_folder
 
 DATA = demo_folder() / "drop-off-bays" / "landings.csv"
@@ -139,11 +140,22 @@ def test_where_software_is_not_allowed_the_manuscript_is_not_read(folder, tmp_pa
 
 def test_progress_is_silent_where_all_is_over_soon():
     said = []
-    for number in range(50):
-        now_and_then(said.append)(str(number))
+    with telling(said.append) as tell:
+        for number in range(50):
+            tell(str(number))
     assert said == []
-    tell = now_and_then(said.append, 0.0)
-    tell("fitting")
+
+
+def test_progress_tells_of_a_step_that_takes_long_while_it_lasts():
+    said, heard = [], threading.Event()
+
+    def say(text):
+        said.append(text)
+        heard.set()
+
+    with telling(say, 0.01) as tell:
+        tell("fitting")
+        assert heard.wait(10)
     assert said == ["fitting …"]
 
 

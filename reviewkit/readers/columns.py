@@ -46,6 +46,8 @@ class ColumnDescription:
     smallest: float | str | None
     largest: float | str | None
     hints: tuple[str, ...] = ()
+    traced: TracedTransform | None = None
+    """Where the column equals a transform of another one."""
 
     @property
     def is_number(self) -> bool:
@@ -91,11 +93,10 @@ def _described_number(table: "Table", column: str, label: str) -> ColumnDescript
     smallest, largest = (float(known.min()), float(known.max())) if distinct else (None, None)
     kind = ColumnKind.DATE if column in table.dates else _number_kind(known, distinct)
     zeros, negatives = int((known == 0).sum()), int((known < 0).sum())
-    hints = _hints(table, column, label, kind)
-    missing = len(values) - len(known)
-    return ColumnDescription(
-        column, label, kind, len(values), missing, zeros, negatives, distinct, smallest, largest, hints
-    )
+    traced = trace_transform(table, column) if kind is ColumnKind.NUMBER else None
+    hints = _hints(table, column, label, traced)
+    counts = (len(values), len(values) - len(known), zeros, negatives, distinct)
+    return ColumnDescription(column, label, kind, *counts, smallest, largest, hints, traced)
 
 
 def _number_kind(known: "numpy.typing.NDArray[numpy.float64]", distinct: int) -> ColumnKind:
@@ -108,8 +109,7 @@ def _number_kind(known: "numpy.typing.NDArray[numpy.float64]", distinct: int) ->
     return ColumnKind.WHOLE_NUMBER if (finite == numpy.round(finite)).all() else ColumnKind.NUMBER
 
 
-def _hints(table: "Table", column: str, label: str, kind: ColumnKind) -> tuple[str, ...]:
-    traced = trace_transform(table, column) if kind is ColumnKind.NUMBER else None
+def _hints(table: "Table", column: str, label: str, traced: TracedTransform | None) -> tuple[str, ...]:
     coded = "numbers stand for texts" if column in table.value_labels else ""
     named = "" if traced else _named_hint(column, label)
     return tuple(hint for hint in (traced.sentence() if traced else "", named, coded) if hint)
