@@ -17,6 +17,7 @@ MATERIAL_SHARE = 0.05
 LEVEL = 0.95
 _WIDEST_SHARE = 10.0  # shares are looked for up to 1,000 %
 _SAME = 1e-9  # relative gap under which two numbers are the same by construction
+_ROUNDING = 1e-6  # of the two errors: a gap and an error of the gap below it are rounding
 
 
 class Verdict(StrEnum):
@@ -81,7 +82,7 @@ def compare(joint: Joint, about: Comparison, cautions: Cautions, share: float = 
     """Fill `about` (term, kind, scale, rows) with the numbers and the conclusion of a pair."""
     difference, error = joint.contrast(1.0)
     half = joint.critical(1.0, LEVEL) * error
-    same = abs(difference) <= _SAME * max(abs(joint.submitted), abs(joint.alternative))
+    same = _same(joint, difference, error)
     own, other = joint.interval_of(0, LEVEL), joint.interval_of(1, LEVEL)
     low, high = (None, None) if same else _relative(joint)
     verdict, why = _verdict(joint, share, same, cautions)
@@ -106,6 +107,14 @@ def compare(joint: Joint, about: Comparison, cautions: Cautions, share: float = 
         sign_turns=_off_zero(own) and _off_zero(other) and joint.submitted * joint.alternative < 0,
         weak=_weakness(joint),
         why=why,
+    )
+
+
+def _same(joint: Joint, difference: float, error: float) -> bool:
+    """Whether the numbers differ by rounding only, as those of two saturated models do."""
+    rounding = _ROUNDING * float(joint.covariance.trace()) ** 0.5
+    return abs(difference) <= _SAME * max(abs(joint.submitted), abs(joint.alternative)) or (
+        abs(difference) <= rounding and error <= rounding
     )
 
 
@@ -163,12 +172,11 @@ def _largest_share(joint: Joint) -> float | None:
 
 def _edge(holds: Callable[[float], bool]) -> float | None:
     """Where a property of the share begins to hold: doubled until it does, then halved to nine digits."""
-    high = 1e-4
+    low, high = 0.0, 1e-4
     while not holds(high):
-        high *= 2
-        if high > _WIDEST_SHARE:
+        if high >= _WIDEST_SHARE:
             return None
-    low = 0.0 if high <= 1e-4 else high / 2
+        low, high = high, min(2 * high, _WIDEST_SHARE)
     while high - low > 1e-9 * high:
         middle = (low + high) / 2
         low, high = (low, middle) if holds(middle) else (middle, high)
@@ -182,8 +190,9 @@ def _relative(joint: Joint) -> tuple[float | None, float | None]:
     centre = joint.alternative / joint.submitted
 
     def end(direction: float) -> float | None:
-        outside = _edge(lambda gap: _beyond(joint, centre + direction * gap))
-        return None if outside is None else centre + direction * outside - 1
+        reach = direction * max(1.0, abs(centre))
+        outside = _edge(lambda gap: _beyond(joint, centre + reach * gap))
+        return None if outside is None else centre + reach * outside - 1
 
     low, high = end(-1.0), end(1.0)
     return (None, None) if low is None or high is None else (low, high)

@@ -11,12 +11,13 @@ from enum import StrEnum
 import numpy as np
 import numpy.typing as npt
 
-from reviewkit.design_matrix import Design, Level, factor_levels, two_valued
+from reviewkit.design_matrix import Design, DesignColumn, Level, factor_levels, two_valued
 from reviewkit.estimators.fit import Fit, influence, leverage
 from reviewkit.expressions import Apply, Column, Factor, Term, columns_of, read_terms
 from reviewkit.refusals import NotEstimable, Refusal
 from reviewkit.specification import Outcome, PerExposure, Specification
 from reviewkit.transforms import MeanPiece, mean_pieces
+from reviewkit.wording import counted
 
 Array = npt.NDArray[np.float64]
 
@@ -45,6 +46,8 @@ class Focus:
     logged: bool
     alone: bool
     """Whether no other term holds the column."""
+    per_unit: bool
+    """Whether, alone in an exponential mean, its coefficient is its effect on its scale."""
 
     def scale(self, in_levels: bool) -> Scale:
         """The scale on which its implied effect is told."""
@@ -95,7 +98,7 @@ def resolve_focus(spec: Specification, design: Design) -> tuple[Focus, ...]:
 def _resolved(term: Term, text: str, spec: Specification, design: Design) -> list[Focus]:
     part = term.parts[0]
     if len(term.parts) == 1 and isinstance(part, Factor):
-        places = [place for place, name in enumerate(design.names) if name.startswith(f"{Factor(part.column)}[")]
+        places = [place for place, piece in enumerate(design.columns_of_x) if _is_class(piece, part.column)]
         found = [_class_focus(design, place, spec) for place in places]
     else:
         place = design.names.index(text) if text in design.names else None
@@ -105,12 +108,17 @@ def _resolved(term: Term, text: str, spec: Specification, design: Design) -> lis
     return found
 
 
+def _is_class(piece: DesignColumn, column: str) -> bool:
+    part = piece.parts[0] if len(piece.parts) == 1 else None
+    return isinstance(part, Level) and part.column == column
+
+
 def _class_focus(design: Design, place: int, spec: Specification) -> Focus:
     piece = design.columns_of_x[place]
     level = piece.parts[0]
     assert isinstance(level, Level)  # noqa: S101
     base = _base_level(design, level.column, spec)
-    return Focus(piece.name, place, level.column, (base, level.value), False, _alone(level.column, spec))
+    return Focus(piece.name, place, level.column, (base, level.value), False, _alone(level.column, spec), True)
 
 
 def _base_level(design: Design, column: str, spec: Specification) -> float | str:
@@ -126,7 +134,8 @@ def _numeric_focus(term: Term, text: str, place: int, owner: tuple[Specification
     column = names[0] if plain else None
     values = two_valued(design.columns[column]) if column is not None and isinstance(part, Column) else None
     logged = isinstance(part, Apply) and part.function == "log" and isinstance(part.argument, Column)
-    return Focus(text, place, column, values, logged, column is not None and _alone(column, spec))
+    per_unit = logged or (plain and isinstance(part, Column) and (values is None or values[1] - values[0] == 1))
+    return Focus(text, place, column, values, logged, column is not None and _alone(column, spec), per_unit)
 
 
 def _alone(column: str, spec: Specification) -> bool:
@@ -137,16 +146,21 @@ def contrast(design: Design, focus: Focus, scale: Scale) -> Contrast:
     """The design rows that the effect of a focal column averages over.
 
     Raises:
-        NotEstimable: The term has no effect of its own, being a product or a power.
+        NotEstimable: The term has no effect of its own, being a product, a power or arithmetic, or no finite slope.
     """
     if focus.column is None:
-        raise NotEstimable(f"term `{focus.term}`", "a product or power has no effect of its own on the mean")
+        raise NotEstimable(
+            f"term `{focus.term}`", "a product, power or arithmetic has no effect of its own on the mean"
+        )
     if focus.values is not None:
         base, high = focus.values
         return Contrast(scale, design.with_column(focus.column, high), design.with_column(focus.column, base), False)
     slope = design.derivative_by(focus.column)
     if scale is Scale.ELASTICITY:
         slope = slope * design.columns[focus.column][:, None]
+    if not np.isfinite(slope).all():
+        steep = int((~np.isfinite(slope)).any(axis=1).sum())
+        raise NotEstimable(f"term `{focus.term}`", f"it has no finite slope in {counted(steep, 'row')}")
     return Contrast(scale, design.x, slope, True)
 
 

@@ -6,10 +6,10 @@ import numpy as np
 import numpy.typing as npt
 
 from reviewkit.comparison import Cautions, Comparison, Kind, compare
-from reviewkit.design_matrix import Design
+from reviewkit.design_matrix import CONSTANT, Design
 from reviewkit.estimators.fit import Codes
-from reviewkit.fitting import FittedModel, fit_model
-from reviewkit.implied import Focus, Scale, contrast, exponential_mean, smeared_mean
+from reviewkit.fitting import FittedModel, check_focus, fit_model
+from reviewkit.implied import Focus, MeanModel, Scale, contrast, exponential_mean, smeared_mean
 from reviewkit.joint import Progress, Side, effective_clusters, estimate_joint
 from reviewkit.model_table import percent_why_not
 from reviewkit.refusals import NotEstimable
@@ -30,7 +30,7 @@ class Task:
 
     spec: Specification
     design: Design
-    """Every usable row."""
+    """The rows of either model."""
     reproduced: bool
     progress: Progress
 
@@ -45,17 +45,19 @@ def comparisons(task: Task, own: Mask, usable: Mask, focus: tuple[Focus, ...]) -
     found: list[Comparison] = []
     for label, mine, theirs in sets:
         task.progress("comparing on the same rows" if label == "common" else "comparing on each model's own rows")
+        either = mine | theirs
         try:
+            here = replace(task, design=task.design.where(either, "in neither model"))
             pair = (
-                fit_model(task.spec, Estimator.OLS, task.design, mine),
-                fit_model(task.spec, Estimator.POISSON, task.design, theirs),
+                fit_model(here.spec, Estimator.OLS, here.design, mine[either]),
+                fit_model(here.spec, Estimator.POISSON, here.design, theirs[either]),
             )
         except NotEstimable as refusal:
             found += [Comparison(each.term, Kind.MODEL, None, label, why=refusal.message()) for each in focus]
             continue
         for each in focus:
             for kind in (Kind.MODEL, Kind.READING) if _is_read(task.spec, each) else (Kind.MODEL,):
-                found.append(_compared(task, pair, each, Comparison(each.term, kind, None, label)))
+                found.append(_compared(here, pair, each, Comparison(each.term, kind, None, label)))
     return tuple(found)
 
 
@@ -66,12 +68,16 @@ def _is_read(spec: Specification, focus: Focus) -> bool:
 
 def _compared(task: Task, pair: tuple[FittedModel, FittedModel], focus: Focus, about: Comparison) -> Comparison:
     spec = task.spec
-    in_levels = spec.outcome.transform is Transform.NONE
-    scale = Scale.COEFFICIENT if _same_quantity(spec) else focus.scale(in_levels)
+    scale = _scale(spec, focus, about.kind)
     try:
-        submitted = _submitted_side(task, pair[0], focus, None if about.kind is Kind.READING else scale)
-        alternative = _alternative_side(task, pair[1], focus, scale)
-        joint = estimate_joint(submitted, alternative, task.design.rows, SEED, task.progress)
+        for made in pair:
+            _check_told_apart(made, focus)
+        if scale is Scale.COEFFICIENT or about.kind is Kind.READING:
+            sides = [_coefficient_side(task, made, focus) for made in pair]
+        else:
+            means = smeared_mean(spec.outcome, pair[0].design), exponential_mean(pair[1].design)
+            sides = [_implied_side(task, made, mean, (focus, scale)) for made, mean in zip(pair, means, strict=True)]
+        joint = estimate_joint(sides[0], sides[1], task.design.rows, SEED, task.progress)
     except NotEstimable as refusal:
         return replace(about, why=refusal.message())
     except np.linalg.LinAlgError:
@@ -83,6 +89,13 @@ def _compared(task: Task, pair: tuple[FittedModel, FittedModel], focus: Focus, a
         coefficient_in_percent=scale is Scale.COEFFICIENT and _in_percent(spec, pair[0], focus),
         printed_inside=_printed_inside(spec, focus, done),
     )
+
+
+def _scale(spec: Specification, focus: Focus, kind: Kind) -> Scale:
+    """The scale of both numbers; a reading takes both coefficients, which are the effect only per unit of it."""
+    if _same_quantity(spec) or (kind is Kind.READING and not focus.per_unit):
+        return Scale.COEFFICIENT
+    return focus.scale(spec.outcome.transform is Transform.NONE)
 
 
 def _same_quantity(spec: Specification) -> bool:
@@ -97,30 +110,22 @@ def _in_percent(spec: Specification, made: FittedModel, focus: Focus) -> bool:
     return percent_why_not(spec.outcome, Estimator.OLS, column, made.design) is None
 
 
-def _submitted_side(task: Task, made: FittedModel, focus: Focus, scale: Scale | None) -> Side:
-    """The submission's number: its coefficient, where that is compared or read (no scale), else what it implies."""
-    if scale is None or scale is Scale.COEFFICIENT:
-        return Side(made.fit, made.rows, _codes(task, made), _place(made, focus))
-    model = smeared_mean(task.spec.outcome, made.design)
-    return Side(made.fit, made.rows, _codes(task, made), None, model, contrast(made.design, focus, scale))
+def _coefficient_side(task: Task, made: FittedModel, focus: Focus) -> Side:
+    return Side(made.fit, made.rows, _codes(task, made), made.design.names.index(focus.term))
 
 
-def _alternative_side(task: Task, made: FittedModel, focus: Focus, scale: Scale) -> Side:
-    place = _place(made, focus)
-    if scale is Scale.COEFFICIENT:
-        return Side(made.fit, made.rows, _codes(task, made), place)
-    of = contrast(made.design, focus, scale)
-    return Side(made.fit, made.rows, _codes(task, made), None, exponential_mean(made.design), of)
+def _implied_side(task: Task, made: FittedModel, mean: MeanModel, of: tuple[Focus, Scale]) -> Side:
+    return Side(made.fit, made.rows, _codes(task, made), None, mean, contrast(made.design, *of))
 
 
-def _place(made: FittedModel, focus: Focus) -> int:
-    if focus.term not in made.design.names:
+def _check_told_apart(made: FittedModel, focus: Focus) -> None:
+    if (focus.term, (CONSTANT,)) in made.collinear:
         raise NotEstimable(f"term `{focus.term}`", "it does not vary in the rows that can be fitted")
-    return made.design.names.index(focus.term)
+    check_focus((focus,), made)
 
 
 def _codes(task: Task, made: FittedModel) -> Codes | None:
-    """The clusters of the model's rows, counted as among all usable rows."""
+    """The clusters of the model's rows, counted among the rows of both."""
     return None if task.design.clusters is None else task.design.clusters[made.rows]
 
 

@@ -1,0 +1,124 @@
+"""Which two numbers are set against each other, on which rows, and when none are."""
+
+from typing import Any
+
+import numpy as np
+import pytest
+from specifying import amounts, refit, table
+
+from reviewkit.comparison import Comparison, Kind
+from reviewkit.implied import Scale
+from reviewkit.readers.tables import Table
+from reviewkit.reestimation import Reestimation
+
+LOG_PLUS = {"column": "y", "transform": "log_plus", "constant": 1}
+POSITIVE = {"column": "y", "transform": "log", "zeros": "dropped"}
+CLUSTERED = {"kind": "cluster", "by": ["cluster"]}
+
+
+def changed(data: Table, **columns: Any) -> Table:
+    return Table(data.name, data.frame.assign(**columns), data.sha256, data.labels)
+
+
+def one(found: Reestimation, kind: Kind, rows: str = "common") -> Comparison:
+    return next(each for each in found.comparison if each.kind is kind and each.rows == rows)
+
+
+# --- a coefficient as read -----------------------------------------------------------------------------------
+
+
+def read(term: str, data: Table) -> Comparison:
+    found = refit(data, outcome=LOG_PLUS, model={"terms": [term, "factor(region)"], "focus": [term]})
+    done = one(found, Kind.READING)
+    assert found.alternative is not None
+    row = found.alternative.term(term)
+    assert row is not None
+    assert done.alternative == pytest.approx(row.estimate, rel=1e-9)
+    return done
+
+
+def test_a_reading_does_not_move_with_the_codes_of_a_two_valued_covariate() -> None:
+    data = amounts()
+    plain = read("treated", data)
+    coded = read("code", changed(data, code=2 * data.frame.treated - 1))
+    assert plain.scale is Scale.LOG_RATIO
+    assert coded.scale is Scale.COEFFICIENT
+    assert coded.conclusion is plain.conclusion
+    assert coded.agree_within_percent == pytest.approx(plain.agree_within_percent, rel=1e-6)
+    assert coded.submitted == pytest.approx(plain.submitted / 2)  # type: ignore[operator]
+
+
+@pytest.mark.parametrize(
+    ("term", "scale"),
+    [
+        ("size", Scale.SEMI_ELASTICITY),
+        ("log(size)", Scale.ELASTICITY),
+        ("sqrt(size)", Scale.COEFFICIENT),
+        ("log(size + 1)", Scale.COEFFICIENT),
+    ],
+)
+def test_a_reading_sets_a_coefficient_against_the_coefficient_of_the_same_term(term: str, scale: Scale) -> None:
+    assert read(term, amounts()).scale is scale
+
+
+# --- focal terms ---------------------------------------------------------------------------------------------
+
+
+def test_the_classes_of_a_focal_factor_do_not_take_in_its_products() -> None:
+    found = refit(amounts(), outcome=LOG_PLUS, model={"terms": ["factor(region)*treated"], "focus": ["factor(region)"]})
+    assert [each.term for each in found.comparison] == ["factor(region)[north]", "factor(region)[west]"]
+
+
+def test_a_slope_that_is_not_finite_is_told_as_such() -> None:
+    data = amounts()
+    size = np.where(np.arange(400) % 9 == 0, 0.0, data.frame["size"])
+    found = refit(changed(data, size=size), outcome=LOG_PLUS, model={"terms": ["sqrt(size)"], "focus": ["sqrt(size)"]})
+    done = one(found, Kind.MODEL)
+    assert done.submitted is None
+    assert "no finite slope in 45 rows" in (done.why or "")
+
+
+def test_a_focal_term_that_separation_makes_collinear_is_not_compared() -> None:
+    data = amounts()
+    early = np.arange(400) < 40
+    other = np.where(early, 1 - data.frame.treated, data.frame.treated)
+    made = changed(data, other=other, early=early.astype(float), y=np.where(early, 0.0, data.frame.y))
+    found = refit(made, outcome=LOG_PLUS, model={"terms": ["treated", "other", "early"], "focus": ["treated"]})
+    assert all(each.submitted is None for each in found.comparison)
+    assert all("cannot be told from that of other" in (each.why or "") for each in found.comparison)
+
+
+# --- rows ----------------------------------------------------------------------------------------------------
+
+
+@pytest.mark.parametrize("empty", [range(8), range(17, 25)], ids=["first", "last"])
+def test_clusters_without_a_row_in_either_model_are_not_counted(empty: range) -> None:
+    data = amounts()
+    made = changed(data, y=np.where(data.frame.cluster.isin(empty), 0.0, data.frame.y))
+    few: dict[str, Any] = {"outcome": POSITIVE, "model": {"terms": ["treated"]}, "errors": CLUSTERED}
+    whole = refit(made, **few)
+    alone = refit(Table("", made.frame[made.frame.y > 0], "", {}), **few)
+    assert one(whole, Kind.MODEL).effective == 17
+    assert one(whole, Kind.MODEL).std_error == pytest.approx(one(alone, Kind.MODEL).std_error, rel=1e-9)
+    assert one(whole, Kind.MODEL, "own").effective == 25
+
+
+def test_resamples_on_common_rows_draw_those_rows_alone() -> None:
+    data = amounts(rows=120, clusters=20)
+    model = {"terms": ["treated", "log(size)"], "focus": ["treated"], "weights": {"column": "w", "kind": "frequency"}}
+    whole = one(refit(data, outcome=POSITIVE, model=model), Kind.MODEL)
+    positive = Table("", data.frame[data.frame.y > 0].reset_index(drop=True), "", {})
+    alone = one(refit(positive, outcome=POSITIVE, model=model), Kind.MODEL)
+    assert whole.method == "bootstrap-t"
+    assert whole.interval == pytest.approx(alone.interval, rel=1e-9)
+
+
+def test_two_saturated_models_give_the_same_number_however_small_it_is() -> None:
+    random = np.random.default_rng(3)
+    treated = np.arange(400.0) % 2
+    noise = random.normal(size=400)
+    noise -= np.array([noise[treated == 0].mean(), noise[treated == 1].mean()])[treated.astype(int)]
+    data = table(y=1e6 + noise + 1e-7 * treated, treated=treated)
+    done = one(refit(data, outcome={"column": "y"}, model={"terms": ["treated"]}), Kind.MODEL)
+    assert done.conclusion is None
+    assert done.why == "both models give the same number by construction"
