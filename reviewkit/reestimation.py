@@ -13,6 +13,7 @@ from reviewkit.evidence.comparison import comparison_exhibit
 from reviewkit.evidence.models import models_exhibit
 from reviewkit.evidence.percents import percent_exhibit
 from reviewkit.evidence.sample import sample_exhibit
+from reviewkit.evidence.step_account import step_account_exhibit
 from reviewkit.exhibit import Exhibit
 from reviewkit.facts import Fact
 from reviewkit.fitting import FittedModel, check_focus, fit_alternative, fit_model, make_sample, submission_rows
@@ -21,8 +22,9 @@ from reviewkit.joint import Progress, effective_clusters
 from reviewkit.model_table import Agreement, ModelTable, agreements, model_table, named_prints
 from reviewkit.pairing import Task, arm_clusters, comparisons
 from reviewkit.refit_facts import refit_facts
-from reviewkit.refusals import Refusal
+from reviewkit.refusals import NotEstimable, Refusal
 from reviewkit.specification import Estimator, Specification, Transform
+from reviewkit.steps_between import why_no_account
 from reviewkit.wording import counted
 
 if TYPE_CHECKING:
@@ -125,7 +127,8 @@ def _reestimate(spec: Specification, table: DataTable, progress: Progress) -> Re
     )
     label = table.labels.get(spec.outcome.column) or spec.outcome.column
     exhibits = _exhibits(found, design, submitted, focus[0], label)
-    return replace(found, exhibits=exhibits, facts=_facts(found, design, focus))
+    facts = (*_facts(found, design, focus), *(fact for each in exhibits for fact in each.facts))
+    return replace(found, exhibits=exhibits, facts=facts)
 
 
 def _model_table(spec: Specification, estimator: Estimator, made: FittedModel) -> ModelTable:
@@ -154,7 +157,19 @@ def _exhibits(found: Reestimation, design: Design, made: FittedModel, focus: Foc
         comparison_exhibit(found.comparison, LEVEL),
         percent_exhibit(*tables, names),
         baseline_exhibit(linear, made.design, place, found.specification.errors, label),
+        *_step_account(found, made.design, focus),
     )
+
+
+def _step_account(found: Reestimation, design: Design, focus: Focus) -> tuple[Exhibit, ...]:
+    """The account on the rows of the submission, where its steps are defined."""
+    spec = found.specification
+    if found.alternative is None or why_no_account(spec.outcome, spec.exposure is not None) is not None:
+        return ()
+    try:
+        return (step_account_exhibit(spec, design, focus, LEVEL),)
+    except (NotEstimable, np.linalg.LinAlgError):
+        return ()
 
 
 def _warnings(first: ModelTable, second: ModelTable | None, own: Mask, usable: Mask) -> tuple[str, ...]:
