@@ -92,8 +92,9 @@ ERROR_TYPES: Mapping[ErrorKind, tuple[str, ...]] = {
 }
 """Types by kind; the first is the default."""
 
-SMALL_SAMPLE = ("default", "none", "n/(n-1)", "G/(G-1)")
-"""Conventions for the factor on a robust or clustered covariance; `default` is that of the type."""
+_FACTORS = ("default", "none")
+SMALL_SAMPLE = {"classical": _FACTORS[:1], "robust": (*_FACTORS, "n/(n-1)"), "cluster": (*_FACTORS, "G/(G-1)")}
+"""Conventions for the factor on the covariance by kind; `default` is that of the type."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -372,13 +373,12 @@ def _errors(table: _Table) -> Errors:
     kind = table.choice("kind", ErrorKind) or ErrorKind.ROBUST
     type_ = table.text("type") or ERROR_TYPES[kind][0]
     by = table.texts("by")
-    if type_ not in ERROR_TYPES[kind]:
-        raise Refusal(table.place("type"), f"`{type_}` does not go with {kind} errors", ", ".join(ERROR_TYPES[kind]))
     if (kind is ErrorKind.CLUSTER) != bool(by):
         raise Refusal(table.place("by"), "columns of clusters go with clustered errors", "both or neither")
     small_sample = table.text("small_sample") or "default"
-    if small_sample not in SMALL_SAMPLE:
-        raise Refusal(table.place("small_sample"), f"`{small_sample}` is not known", ", ".join(SMALL_SAMPLE))
+    for key, value, allowed in (("type", type_, ERROR_TYPES[kind]), ("small_sample", small_sample, SMALL_SAMPLE[kind])):
+        if value not in allowed:
+            raise Refusal(table.place(key), f"`{value}` does not go with {kind} errors", ", ".join(allowed))
     return Errors(kind, type_, by, small_sample)
 
 

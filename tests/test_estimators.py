@@ -5,6 +5,7 @@ from typing import Any
 import numpy as np
 import pytest
 import statsmodels.api as sm
+from specifying import specification
 
 from reviewkit.estimators.basis import well_conditioned
 from reviewkit.estimators.covariance import infer
@@ -12,7 +13,7 @@ from reviewkit.estimators.fit import Sample, influence_rows
 from reviewkit.estimators.least_squares import fit_least_squares
 from reviewkit.estimators.poisson import fit_poisson
 from reviewkit.estimators.separation import separated_rows
-from reviewkit.refusals import NotEstimable
+from reviewkit.refusals import NotEstimable, Refusal
 from reviewkit.specification import ErrorKind, Errors
 
 
@@ -232,3 +233,21 @@ def test_what_poisson_cannot_fit_is_said() -> None:
         fit_poisson(sample(x, [1.0, -2, 3, 4]))
     with pytest.raises(NotEstimable, match="zero in every row"):
         fit_poisson(sample(x, [0.0, 0, 0, 0]))
+
+
+@pytest.mark.parametrize(
+    ("kind", "factor", "allowed"),
+    [
+        ("cluster", "n/(n-1)", "default, none, G/(G-1)"),
+        ("robust", "G/(G-1)", "default, none, n/(n-1)"),
+        ("classical", "none", "default"),
+    ],
+)
+def test_a_factor_that_the_kind_of_errors_does_not_use_is_refused_and_not_ignored(
+    kind: str, factor: str, allowed: str
+) -> None:
+    by = {"by": ["village"]} if kind == "cluster" else {}
+    errors = {"kind": kind, "small_sample": factor, **by}
+    with pytest.raises(Refusal) as told:
+        specification(outcome={"column": "y"}, model={"terms": ["x"]}, errors=errors)
+    assert allowed in told.value.message()

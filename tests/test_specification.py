@@ -171,7 +171,7 @@ def test_any_specification_is_read_the_same_again(
         ({"errors": {"kind": "robust", "type": "CR1"}}, "errors.type", "does not go with robust errors"),
         ({"errors": {"kind": "cluster"}}, "errors.by", "both or neither"),
         ({"errors": {"kind": "robust", "by": ["g"]}}, "errors.by", "both or neither"),
-        ({"errors": {"small_sample": "n/(n-9)"}}, "errors.small_sample", "is not known"),
+        ({"errors": {"small_sample": "n/(n-9)"}}, "errors.small_sample", "does not go with"),
         ({"alternative": {"estimator": "x"}}, "alternative.estimator", "`x` is not known"),
         ({"printed": {"terms": {"x": {"estimate": "many"}}}}, "printed.terms.x.estimate", "`many` is not a number"),
     ],
