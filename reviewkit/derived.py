@@ -3,10 +3,12 @@
 import math
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass
+from statistics import NormalDist
 
 from reviewkit.clauses import Lookup
 from reviewkit.facts import NOT_STATED, Fact, Facts, NotStated, Source, SourceKind, Standing, Value
 from reviewkit.printed import Printed
+from reviewkit.wording import interval, sign, size_percent
 
 _LARGEST_EXPONENT = 700.0
 _WITH_ZEROS = ("dropped", "replaced by a small value", "own part of a two-part model")
@@ -87,7 +89,114 @@ def scale_in_words(lookup: Lookup) -> Value | None:
     return scale.replace("_", " ") if isinstance(scale, str) else None
 
 
+def percent_low(lookup: Lookup) -> Value | None:
+    """The lower end of the 95 % interval of 100·(exp(b) − 1), from the printed error and the normal distribution."""
+    return _percent_end(lookup, 0.025)
+
+
+def percent_high(lookup: Lookup) -> Value | None:
+    """The upper end of the 95 % interval of 100·(exp(b) − 1), from the printed error and the normal distribution."""
+    return _percent_end(lookup, 0.975)
+
+
+def _percent_end(lookup: Lookup, probability: float) -> float | None:
+    b, error = _printed(lookup("claim.coefficient")), _printed(lookup("claim.std_error"))
+    if b is None or error is None or error.value <= 0:
+        return None
+    end = b.value + NormalDist().inv_cdf(probability) * error.value
+    return None if abs(end) > _LARGEST_EXPONENT else 100 * math.expm1(end)
+
+
+# --- in words ---------------------------------------------------------------------------------------------------
+
+
+def percent_interval(lookup: Lookup) -> Value | None:
+    """That interval with the direction left to the sentence, where both ends have one."""
+    low, high = _percent_end(lookup, 0.025), _percent_end(lookup, 0.975)
+    if low is None or high is None:
+        return None
+    ends = sorted((abs(low), abs(high))) if low * high > 0 else (low, high)
+    return interval(*ends, "%")
+
+
+def percent_reading(lookup: Lookup) -> Value | None:
+    """What the printed percent is, where it is 100·b and cannot be 100·(exp(b) − 1)."""
+    read_off = percent_is_coefficient(lookup) == "yes" and percent_is_exact(lookup) == "no"
+    return "a hundred times the coefficient" if read_off else None
+
+
+def target_in_words(lookup: Lookup) -> Value | None:
+    """What a claim is about, with its article: `a total`."""
+    target = lookup("claim.target")
+    return _TARGETS.get(target, target) if isinstance(target, str) else None
+
+
+def as_printed(lookup: Lookup) -> Value | None:
+    """Words for a coefficient that came out of the data to the printed digits."""
+    return "as printed" if lookup("refit.reproduced") == "yes" else None
+
+
+def relative_in_words(lookup: Lookup) -> Value | None:
+    """By how much the alternative is smaller or larger, where it has the same sign."""
+    size = lookup("refit.relative_percent")
+    if not isinstance(size, float) or lookup("refit.sign_turns") == "yes" or size <= -100:
+        return None
+    if lookup("refit.difference_excludes_zero") != "yes":
+        return None
+    words = f"about {size_percent(size)} {'smaller' if size < 0 else 'larger'} than the first"
+    words += ", compared in logs" if lookup("refit.scale") == "log_ratio_of_means" else ""
+    ends = [lookup(f"refit.relative_{end}") for end in ("smallest", "largest")]
+    low, high = (end if isinstance(end, float) else None for end in ends)
+    return words if low is None or high is None else f"{words} (95 % interval {interval(low, high, '%')})"
+
+
+def direction_holds(lookup: Lookup) -> Value | None:
+    """Words where both estimates have the same sign."""
+    first, second = _signs(lookup)
+    return f"both estimates are {first}" if first and first == second else None
+
+
+def signs_differ(lookup: Lookup) -> Value | None:
+    """Words where the two estimates have different signs."""
+    first, second = _signs(lookup)
+    return f"the first is {first}, the second {second}" if first != second else None
+
+
+def _signs(lookup: Lookup) -> tuple[str, str]:
+    """The signs of both estimates in words, empty where one of them is not known."""
+    found = [lookup(name) for name in ("refit.submitted", "refit.alternative")]
+    first, second = (sign(one) if isinstance(one, float) and one else "" for one in found)
+    return (first, second) if first and second else ("", "")
+
+
+def no_difference_found(lookup: Lookup) -> Value | None:
+    """Words where the interval of the difference takes in zero."""
+    return "no sign of a difference" if lookup("refit.difference_excludes_zero") == "no" else None
+
+
+def selected_after_lottery(lookup: Lookup) -> Value | None:
+    """What leaving out outcomes does to a comparison that was assigned at random."""
+    at_random = lookup("assignment.random") in ("yes", "within strata")
+    return "the assignment at random no longer protects the comparison of those that remain" if at_random else None
+
+
+_TARGETS = {
+    "arithmetic mean": "the mean",
+    "total or aggregate": "a total",
+    "ratio of means": "a ratio of means",
+    "geometric mean": "the geometric mean",
+    "average proportional change": "the average proportional change",
+    "median": "the median",
+    "growth of a unit": "the growth of a unit",
+    "direction only": "the direction only",
+}
 _PERCENT = ("claim.coefficient", "claim.percent")
+_PERCENT_ENDS = ("claim.coefficient", "claim.std_error")
+_RELATIVE = (
+    *("refit.relative_percent", "refit.relative_smallest", "refit.relative_largest"),
+    *("refit.scale", "refit.sign_turns", "refit.difference_excludes_zero"),
+)
+_BOTH = ("refit.submitted", "refit.alternative")
 _INSIDE = (
     "claim.percent",
     "refit.alternative_percent_low",
@@ -100,10 +209,21 @@ DERIVATIONS = (
     Derivation("claim.percent_exact", "claim", ("claim.coefficient",), percent_exact),
     Derivation("claim.percent_is_coefficient", "claim", _PERCENT, percent_is_coefficient),
     Derivation("claim.percent_is_exact", "claim", _PERCENT, percent_is_exact),
+    Derivation("claim.percent_low", "claim", _PERCENT_ENDS, percent_low),
+    Derivation("claim.percent_high", "claim", _PERCENT_ENDS, percent_high),
+    Derivation("claim.percent_interval", "claim", _PERCENT_ENDS, percent_interval),
+    Derivation("claim.percent_reading", "claim", _PERCENT, percent_reading),
+    Derivation("claim.target_in_words", "claim", ("claim.target",), target_in_words),
     Derivation("claim.inside_alternative", "claim", _INSIDE, inside_alternative),
     Derivation("outcome.has_zeros", "model", ("outcome.zero_share", "outcome.zeros"), has_zeros),
     Derivation("spread.steady", "model", ("refit.conclusion",), spread_is_steady),
     Derivation("refit.scale_in_words", "model", ("refit.scale",), scale_in_words),
+    Derivation("refit.as_printed", "model", ("refit.reproduced",), as_printed),
+    Derivation("refit.relative_in_words", "model", _RELATIVE, relative_in_words),
+    Derivation("refit.direction_holds", "model", _BOTH, direction_holds),
+    Derivation("refit.signs_differ", "model", _BOTH, signs_differ),
+    Derivation("refit.no_difference_found", "model", ("refit.difference_excludes_zero",), no_difference_found),
+    Derivation("assignment.after_selection", "study", ("assignment.random",), selected_after_lottery),
     Derivation("clusters.smaller_arm", "model", ("refit.treated_clusters", "refit.untreated_clusters"), smaller_arm),
 )
 """In an order in which none needs a later one."""

@@ -3,7 +3,7 @@
 import json
 import re
 import tomllib
-from collections.abc import Iterator, Mapping
+from collections.abc import Collection, Iterator, Mapping
 from dataclasses import dataclass, field
 from enum import StrEnum
 from pathlib import Path
@@ -25,7 +25,10 @@ UNKNOWN = "unknown"
 _TEXTS = ("title", "says", "why", "best_case", "request", "short", "way", "stands", "clear")
 _NEEDED = ("title", "subject", "importance", "when", "says", "why", "best_case", "request", "short", "examples")
 _CONDITIONS = ("applies", "when", "stands_when", "major_when")
-_RULE_KEYS = (*_TEXTS, *_CONDITIONS, "subject", "importance", "references", "basis", "facts", "usual", "examples")
+_RULE_KEYS = (
+    *(*_TEXTS, *_CONDITIONS, "subject", "importance", "covered_by"),
+    *("references", "basis", "facts", "usual", "examples"),
+)
 _FACT_KEYS = ("name", "about", "kind", "options", "question", "found_in", "explains", "unit", "label", "low", "high")
 
 _EXAMPLES = re.compile(r"^\[usual\]|^\[\[examples\]\]", re.MULTILINE)
@@ -64,6 +67,16 @@ class _Leaf:
             raise self.refusal(f"`{value}` is no {key}", ", ".join(choices))
         return choices(value)
 
+    def names(self, key: str, known: Collection[str]) -> tuple[str, ...]:
+        """A list of names, each of them known."""
+        value = self.content.get(key, [])
+        if not isinstance(value, list) or not all(isinstance(each, str) for each in value):
+            raise self.refusal(f"`{key}` is not a list of names", f'{key} = ["…", "…"]')
+        for name in value:
+            if name not in known:
+                raise self.refusal(f"{key}: there is no rule `{name}`", "", closest(name, tuple(known)))
+        return tuple(value)
+
     def tables(self, key: str) -> tuple[Mapping[str, Any], ...]:
         value = self.content.get(key, [])
         if not isinstance(value, list) or not all(isinstance(each, dict) for each in value):
@@ -90,7 +103,7 @@ def read_rule_book(folder: Path, house_folders: tuple[Path, ...] = (), examples:
         leaves |= {path.stem: (path.parent.name, _leaf(path, each, examples)) for path in paths}
     spoken = {name: leaf for name, leaf in leaves.items() if leaf[1].content.get("silenced") is not True}
     vocabulary = vocabulary.adding(definition for _, leaf in spoken.values() for definition in _definitions(leaf))
-    reader = _RuleReader(vocabulary, {name: setting.value for name, setting in settings.items()}, works)
+    reader = _RuleReader(vocabulary, {name: setting.value for name, setting in settings.items()}, works, tuple(leaves))
     rules = sorted((reader.rule(name, *leaf) for name, leaf in spoken.items()), key=_place_in_book)
     return RuleBook(tuple(rules), vocabulary, settings, works)
 
@@ -182,6 +195,8 @@ class _RuleReader:
     vocabulary: Vocabulary
     settings: Mapping[str, float]
     works: Mapping[str, Work]
+    names: tuple[str, ...]
+    """Of all rules, silenced ones too."""
 
     def rule(self, name: str, topic: str, leaf: _Leaf) -> Rule:
         """The rule in one file."""
@@ -204,6 +219,7 @@ class _RuleReader:
             importance=leaf.choice(leaf.content, "importance", Importance, ""),
             references=references,
             basis=basis,
+            covered_by=leaf.names("covered_by", self.names),
             examples=tuple(self.examples(leaf)),
             applies=self.condition(leaf, "applies") or ALWAYS,
             when=self.condition(leaf, "when") or ALWAYS,

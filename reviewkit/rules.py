@@ -82,6 +82,8 @@ class Rule:
     references: tuple[Citation, ...] = ()
     basis: str = ""
     """`common practice, no source` where no work is cited."""
+    covered_by: tuple[str, ...] = ()
+    """Names of rules that say as much: a note does not tell this one where one of them is raised about the same."""
     examples: tuple[Example, ...] = ()
 
     @property

@@ -132,6 +132,14 @@ def direction(value: object) -> str:
     return _by_sign(value, ("lower", "unchanged", "higher"))
 
 
+def change(value: object) -> str:
+    """A change in percent with its direction in words: `a fall of 29 %`, `a rise of 46 %`."""
+    found = _number(value)
+    if found is None or not math.isfinite(found) or found == 0:
+        return percent(value)
+    return f"a {'fall' if found < 0 else 'rise'} of {size_percent(value)}"
+
+
 def sign(value: object) -> str:
     """`positive`, `negative` or `zero`."""
     return _by_sign(value, ("negative", "zero", "positive"))
@@ -181,6 +189,7 @@ FORMATTERS: Mapping[str, Callable[[object], str]] = MappingProxyType(
         "percent": percent,
         "signed_percent": signed_percent,
         "size_percent": size_percent,
+        "change": change,
         "share": share,
         "number": number,
         "estimate": estimate,

@@ -166,3 +166,42 @@ def test_each_derivation_says_what_it_needs_and_where_it_comes_from():
         assert needs(derivation.name) == derivation.needs
         assert derivation.work_out.__doc__
     assert needs("outcome.transform") == ()
+
+
+def test_the_interval_of_a_percent_comes_from_the_printed_error():
+    given = {"claim__coefficient": P("-0.342"), "claim__std_error": P("0.052")}
+    assert derived("claim.percent_low", **given) == pytest.approx(100 * math.expm1(-0.342 - 1.959964 * 0.052))
+    assert derived("claim.percent_high", **given) == pytest.approx(100 * math.expm1(-0.342 + 1.959964 * 0.052))
+    assert derived("claim.percent_interval", **given) == "21 to 36 %"  # the sentence says that it is a fall
+    given["claim__std_error"] = P("0.300")
+    assert derived("claim.percent_interval", **given) == "-61 to 28 %"
+    assert derived("claim.percent_low", claim__coefficient=P("-0.342"), claim__std_error=NOT_STATED) is NOT_STATED
+
+
+def test_a_difference_is_told_by_size_direction_and_interval():
+    given = {"refit__relative_percent": -70.0, "refit__relative_smallest": 52.0, "refit__relative_largest": 94.0}
+    given |= {"refit__scale": "log_ratio_of_means", "refit__difference_excludes_zero": "yes", "refit__sign_turns": "no"}
+    words = "about 70 % smaller than the first, compared in logs (95 % interval 52 to 94 %)"
+    assert derived("refit.relative_in_words", **given) == words
+    assert "larger" in derived("refit.relative_in_words", **{**given, "refit__relative_percent": 70.0})
+    without = {**given, "refit__relative_smallest": NOT_STATED}
+    assert "interval" not in derived("refit.relative_in_words", **without)
+    for other in ({"refit__sign_turns": "yes"}, {"refit__relative_percent": -130.0}):
+        assert derived("refit.relative_in_words", **{**given, **other}) is None
+    assert derived("refit.relative_in_words", **{**given, "refit__difference_excludes_zero": "no"}) is None
+
+
+def test_signs_of_both_estimates_are_told_as_one_sentence():
+    same = {"refit__submitted": 0.5, "refit__alternative": 0.2}
+    turned = {**same, "refit__alternative": -0.2}
+    assert derived("refit.direction_holds", **same) == "both estimates are positive"
+    assert derived("refit.signs_differ", **turned) == "the first is positive, the second negative"
+    assert derived("refit.signs_differ", **same) is None
+    assert derived("refit.direction_holds", **turned) is None
+    assert derived("refit.direction_holds", **{**same, "refit__alternative": 0.0}) is None
+
+
+def test_a_percent_is_named_a_hundred_times_the_coefficient_only_where_it_can_be_nothing_else():
+    assert derived("claim.percent_reading", claim__coefficient=P("0.506"), claim__percent=P("51"))
+    assert derived("claim.percent_reading", claim__coefficient=P("0.05"), claim__percent=P("5")) is None
+    assert derived("claim.percent_reading", claim__coefficient=P("0.506"), claim__percent=P("66")) is None

@@ -141,14 +141,14 @@ def test_rule_files_carry_no_code_names_and_their_stem_is_a_slug():
 def test_a_difference_is_told_in_the_words_that_its_bounds_allow():
     rule = BOOK.rule("difference-not-settled")
     bounds = {"refit.agree_within_percent": 12.0, "refit.scale_in_words": "log ratio of means"}
-    both = {**bounds, "refit.differ_by_at_least_percent": 1.0}
-    assert render(rule.says, both.get) == (
-        "Your model and a model of the mean differ, by an amount that the data put between 1.0 % and 12 % of your "
-        "model's figure, both taken as log ratio of means."
+    apart = {**bounds, "refit.relative_in_words": "about 4 % larger than the first (95 % interval 1.0 to 12 %)"}
+    assert render(rule.says, apart.get) == (
+        "Your model and a model of the mean differ: taking the two in this order, the second is about 4 % larger than "
+        "the first (95 % interval 1.0 to 12 %)."
     )
-    assert "no sign of a difference" in render(
-        rule.says, {**bounds, "refit.differ_by_at_least_percent": NOT_STATED}.get
-    )
+    nothing = {**bounds, "refit.no_difference_found": "no sign of a difference"}
+    assert "no sign of a difference" in render(rule.says, nothing.get)
+    assert "no sign" not in render(rule.says, bounds.get)
     assert render(rule.clear, bounds.get).endswith("the data bound it at 12 %.")
     assert (
         render(rule.says, {}.get)

@@ -128,6 +128,8 @@ def test_a_house_can_set_thresholds(tmp_path):
         ('title = "A house rule"', "title = 3", "`title` is not a text"),
         ('title = "A house rule"', "title = A house rule", "this is not TOML: "),
         ("[[facts]]", "[facts]", "`facts` is not a list of tables. Allowed: [[facts]]"),
+        ('importance = "minor"', 'importance = "minor"\ncovered_by = ["few-clster"]', "there is no rule `few-clster`"),
+        ('importance = "minor"', 'importance = "minor"\ncovered_by = "few-clusters"', "is not a list of names"),
         ("[[examples]]", "[examples]", "`examples` is not a list of tables"),
         ("outcome.zero_share > 0.5", "outcome.zero_share > setting.half", "there is no setting of that name"),
         ("outcome.zero_share > 0.5", "(" * 30 + "outcome.zero_share" + ")" * 30 + " > 0.5", "nested too deeply"),
