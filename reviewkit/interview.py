@@ -18,7 +18,12 @@ from reviewkit.wording import percent, share, text
 
 CONFIRM = "confirm"
 """Name of the prompt that shows many machine readings at once."""
-TOGETHER = "confirmed together"
+CHECKLIST = "checklist"
+"""Name of the prompt that asks several yes-or-no questions at once."""
+TOGETHER = "answered together"
+"""Begins the text of entries that one screen made, and that are undone at once."""
+FEWEST_TOGETHER = 2
+"""Yes-or-no questions that make a list."""
 LONGEST_QUOTE = 90
 MOST_AT_ONCE = 12
 """Readings on one screen."""
@@ -71,7 +76,9 @@ def next_prompt(interview: Interview) -> Prompt | None:
 
 
 def entries_for(prompt: Prompt, value: Value, place: str, interview: Interview) -> tuple[Entry, ...]:
-    """What an answer adds to the log; for a screen of readings one entry each."""
+    """What an answer adds to the log; for a screen of readings, or a list of questions, one entry each."""
+    if prompt.name == CHECKLIST:
+        return _checked(prompt, value, interview)
     if prompt.name != CONFIRM:
         return (Entry(Act.ANSWER, prompt.name, prompt.subject, value, place),)
     wrong = value if isinstance(value, tuple) else ()
@@ -83,7 +90,8 @@ def undoing(entries: Iterable[Entry]) -> tuple[Entry, ...]:
     """The entries that take back the last step; a screen that was confirmed goes back whole."""
     held = [each for each in standing_entries(entries) if each.act is not Act.REMARK]
     count = 1 if held else 0
-    while held and held[-1].text == TOGETHER and count < len(held) and held[-1 - count].text == TOGETHER:
+    together = held[-1].text if held and held[-1].text.startswith(TOGETHER) else None
+    while count < len(held) and held[-1 - count].text == together:
         count += 1
     return tuple(Entry(Act.UNDO) for _ in range(count))
 
@@ -165,7 +173,53 @@ def _confirmation(interview: Interview) -> Prompt | None:
 
 def _rule_prompt(interview: Interview) -> Prompt | None:
     question = next_question(facts_of(interview), _asking_book(interview))
-    return None if question is None else _of_question(question, interview)
+    if question is None:
+        return None
+    together = _asked_together(question, interview)
+    return _of_question(question, interview) if len(together) < FEWEST_TOGETHER else _checklist(together)
+
+
+def _asked_together(question: Question, interview: Interview) -> tuple[FactDefinition, ...]:
+    """Unknown yes-or-no facts that open rules wait on, answered from the same place as the question."""
+    first = question.definition
+    if first.kind is not Kind.ANSWER or (CHECKLIST, "study") in _skipped(interview):
+        return ()
+    book, facts = _asking_book(interview), facts_of(interview)
+    missing = {name for each in decide(facts, book) for name in each.missing}
+    same = (each for each in book.vocabulary if each.kind is Kind.ANSWER and each.found_in is first.found_in)
+    return tuple(
+        each for each in same if each.asked and each.name in missing and facts.known(each.name, _subject(each)) is None
+    )
+
+
+def _checklist(definitions: tuple[FactDefinition, ...]) -> Prompt:
+    place = definitions[0].found_in.value
+    explained = " ".join(f"{number}: {each.explains}" for number, each in enumerate(definitions, start=1))
+    partly = tuple(each.name for each in definitions if "partly" in each.options)
+    example = next((str(number) for number, each in enumerate(definitions, start=1) if each.name in partly), "")
+    return Prompt(
+        CHECKLIST,
+        f"Look at the {place}. To which of these is the answer yes?",
+        Form.CHECKLIST,
+        choices=tuple(Choice(each.name, each.question) for each in definitions),
+        hint="numbers with blanks between"
+        + (f", `{example}p` for partly" if example else "")
+        + "; those left out count as no; `none`; `s` asks one by one",
+        explains=explained,
+        partly=partly,
+    )
+
+
+def _checked(prompt: Prompt, value: Value, interview: Interview) -> tuple[Entry, ...]:
+    """An entry for each question of the list: yes, partly where marked, else no."""
+    chosen = value if isinstance(value, tuple) else ()
+    marked = {each.rstrip("p"): "partly" if each.endswith("p") else "yes" for each in chosen}
+    together = f"{TOGETHER}: {prompt.choices[0].value}"
+    return tuple(
+        Entry(Act.ANSWER, each.value, _subject(interview.book.vocabulary[each.value]), said, text=together)
+        for number, each in enumerate(prompt.choices, start=1)
+        for said in (marked.get(str(number), "no"),)
+    )
 
 
 def _of_question(question: Question, interview: Interview) -> Prompt:

@@ -22,6 +22,7 @@ class Form(StrEnum):
     TEXT = "text"
     COLUMN = "column"  # one of many choices, searched by a part of the name
     TERMS = "terms"  # columns, or terms in their grammar
+    CHECKLIST = "checklist"  # the numbers of what holds; 2p for partly
     CONFIRM = "confirm"  # all right, or the numbers of those that are wrong
 
 
@@ -57,6 +58,8 @@ class Prompt:
     """What waits on the answer, in words."""
     hint: str = ""
     """What may be typed, in a few words."""
+    partly: tuple[str, ...] = ()
+    """Values of those choices of a checklist that may hold in part."""
     definition: FactDefinition | None = None
     """Of a fact that rules ask for; such a fact may be `not stated`."""
 
@@ -154,6 +157,8 @@ def _of_form(prompt: Prompt, text: str) -> Reply:
             return _of_one(prompt, text)
         case Form.SEVERAL | Form.CONFIRM:
             return _of_several(prompt, text)
+        case Form.CHECKLIST:
+            return _of_checklist(prompt, text)
         case Form.TERMS:
             return _of_terms(prompt, text)
         case Form.NUMBER:
@@ -186,6 +191,20 @@ def _of_several(prompt: Prompt, text: str) -> Reply:
         if isinstance(found, Matches):
             return found if found.found else Unclear(f"`{token[:40]}` fits none of the choices. {_numbers(prompt)}")
     return Answered(tuple(dict.fromkeys(each.value for each in chosen if isinstance(each, Choice))))
+
+
+def _of_checklist(prompt: Prompt, text: str) -> Reply:
+    """Numbers of what holds, `p` behind those that hold in part: `1 3p` is ("1", "3p")."""
+    if text.casefold() == "none":
+        return Answered(())
+    tokens = text.casefold().replace(",", " ").split()
+    for token in tokens:
+        number, partly = token.rstrip("p"), token.endswith("p")
+        if not number.isdecimal() or not 1 <= int(number) <= len(prompt.choices):
+            return Unclear(f"`{token[:40]}` is no number of the list. Type such as `1 3`, `2p` for partly, or `none`.")
+        if partly and prompt.choices[int(number) - 1].value not in prompt.partly:
+            return Unclear(f"{number} is yes or no: type `{number}`, or leave it out.")
+    return Answered(tuple(dict.fromkeys(tokens)))
 
 
 _TERM = re.compile(r"(?:`[^`]*`|\([^()]*(?:\([^()]*\)[^()]*)*\)|[^\s,(`])+")
@@ -256,6 +275,8 @@ def _wanted(prompt: Prompt) -> str:
             return "the figure as printed, such as 0.38"
         case Form.TEXT | Form.NAMES:
             return "a few words"
+        case Form.CHECKLIST:
+            return "the numbers of those that hold, or `none`"
         case _:
             return "a number from the list"
 

@@ -197,11 +197,15 @@ def test_there_is_nothing_to_undo_at_the_beginning():
 # --- the rules' questions --------------------------------------------------------------------------------------------
 
 
+def replaced(interview: Interview, prompt: Prompt, value) -> Interview:
+    """The interview after that answer."""
+    return replace(interview, entries=(*interview.entries, *entries_for(prompt, value, "", interview)))
+
+
 def answered_by(interview: Interview, choose) -> Interview:
     while (prompt := next_prompt(interview)) is not None:
         assert len(interview.entries) < 80
-        entry = Entry(Act.ANSWER, prompt.name, prompt.subject, choose(prompt))
-        interview = replace(interview, entries=(*interview.entries, entry))
+        interview = replaced(interview, prompt, choose(prompt))
     return interview
 
 
@@ -210,6 +214,8 @@ def some_answer(chance: random.Random):
         match prompt.form:
             case Form.ONE:
                 return chance.choice([*(each.value for each in prompt.choices), NOT_STATED])
+            case Form.CHECKLIST:
+                return tuple(str(number) for number in range(1, len(prompt.choices) + 1) if chance.random() < 0.3)
             case Form.SEVERAL:
                 return tuple(each.value for each in prompt.choices if chance.random() < 0.3)
             case Form.NUMBER:
@@ -275,10 +281,51 @@ def test_the_next_question_comes_within_a_tenth_of_a_second():
         slowest = max(slowest, time.perf_counter() - start)
         if prompt is None:
             break
-        interview = replace(
-            interview, entries=(*interview.entries, Entry(Act.ANSWER, prompt.name, prompt.subject, chance(prompt)))
-        )
+        interview = replaced(interview, prompt, chance(prompt))
     assert slowest < 0.1
+
+
+# --- several yes-or-no questions at once ------------------------------------------------------------------------------
+
+
+def first_checklist() -> tuple[Interview, Prompt]:
+    interview = without_specification()
+    while (prompt := next_prompt(interview)).form is not Form.CHECKLIST:
+        interview = replaced(interview, prompt, some_answer(random.Random(0))(prompt))
+    return interview, prompt
+
+
+def test_yes_or_no_questions_from_one_place_are_asked_at_once():
+    interview, prompt = first_checklist()
+    asked = [BOOK.vocabulary[each.value] for each in prompt.choices]
+    assert len(asked) > 1
+    assert len({each.found_in for each in asked}) == 1
+    assert {each.kind for each in asked} == {Kind.ANSWER}
+    after = facts_of(replaced(interview, prompt, ("2",)))
+    values = [after.known(each.name, f"{each.about}:main".replace("study:main", "study")).value for each in asked]
+    assert values == ["no", "yes", *["no"] * (len(asked) - 2)]
+
+
+def test_a_list_is_undone_whole_and_skipping_it_asks_one_by_one():
+    interview, prompt = first_checklist()
+    after = replaced(interview, prompt, ())
+    undone = replace(after, entries=(*after.entries, *undoing(after.entries)))
+    assert next_prompt(undone) == prompt
+    skipped = replace(interview, entries=(*interview.entries, Entry(Act.SKIP, prompt.name, prompt.subject)))
+    assert next_prompt(skipped).name in [each.value for each in prompt.choices]
+
+
+LIST = Prompt("checklist", "?", Form.CHECKLIST, choices=(Choice("a"), Choice("b")), partly=("b",))
+
+
+@pytest.mark.parametrize(("typed", "value"), [("1", ("1",)), ("1, 2p", ("1", "2p")), ("none", ()), ("2 2", ("2",))])
+def test_a_list_takes_numbers_and_parts(typed, value):
+    assert read_reply(LIST, typed) == Answered(value)
+
+
+@pytest.mark.parametrize("typed", ["3", "0", "1p", "yes", "", "²"])
+def test_a_list_takes_nothing_else_and_never_an_empty_reply(typed):
+    assert isinstance(read_reply(LIST, typed), Unclear)
 
 
 # --- proposals -------------------------------------------------------------------------------------------------------

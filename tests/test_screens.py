@@ -1,5 +1,6 @@
 """The interview on its screens: scripted, over a pipe, and in a real terminal."""
 
+import math
 import os
 import re
 import shutil
@@ -7,14 +8,18 @@ import subprocess
 import sys
 import threading
 import time
+from dataclasses import replace
 from pathlib import Path
 
 import pytest
 
-from reviewkit import casefolder, review
+from reviewkit import casefolder, data_columns, review
 from reviewkit.answers import Act
 from reviewkit.casefolder import Input, Policy
+from reviewkit.interview import entries_for, next_prompt
 from reviewkit.interview_screen import ask_policy, closing, hold
+from reviewkit.printed import read_printed
+from reviewkit.prompts import Form
 from reviewkit.screen import Screen, telling
 from reviewkit.shipped import demo_folder
 
@@ -201,6 +206,81 @@ def test_a_data_file_that_is_not_there_is_one_line_and_asked_again(folder):
     script, _ = held(folder, ["no such.csv", "q"])
     assert casefolder.read_entries(casefolder.open_case(folder)) == ()
     assert "no such.csv" in script.text
+
+
+LINE = "reg lnkg bay length_m years km_site i.area, vce(cluster harbour)"
+
+
+@pytest.mark.parametrize("before", [[], [""], ["", ""], ["", "", "netting_kg", "log_plus", "1"]])
+def test_a_pasted_line_is_taken_at_any_question_about_the_model(with_data, before):
+    script, _ = held(with_data, [*before, LINE, "q"])
+    entries = casefolder.read_entries(casefolder.open_case(with_data))
+    assert entries[-1].name == "specification.line"
+    assert entries[-1].understood["errors"]["by"] == ["harbour"]
+    assert "understood: errors" in script.text
+    assert "may already be a log" in script.text
+
+
+def test_names_of_columns_are_no_model_line(with_data):
+    held(with_data, ["", "", "netting_kg", "log_plus", "1", "bay length_m years", "q"])
+    entries = casefolder.read_entries(casefolder.open_case(with_data))
+    assert entries[-1].value == ("bay", "length_m", "years")
+
+
+def test_a_logged_column_of_the_data_needs_one_enter(folder, tmp_path):
+    rows = [f"{1 + each % 23 * 1.5},{math.log(2 + each % 23 * 1.5):.9f},{each % 2},{each % 5}" for each in range(60)]
+    data = tmp_path / "shops.csv"
+    data.write_text("\n".join(["sales,lnsales,desk,age", *rows]))
+    case = casefolder.giving(casefolder.open_case(folder), Input.DATA, data)
+    review.read_inputs(case)
+    script, _ = held(folder, ["reg lnsales desk age, r", "", "", "desk", "", "", "", "q"])
+    spec = review.specification_of(casefolder.open_case(folder))
+    assert "The data show that lnsales equals log(sales + 1)." in script.text
+    assert (spec.outcome.column, spec.outcome.constant) == ("sales", 1)
+    known = review.look(folder).facts
+    assert known.known("claim.covariate", "claim:main").value == "two-valued"
+
+
+def test_what_reading_the_data_had_to_decide_is_said(folder, tmp_path):
+    data = tmp_path / "shops.csv"
+    data.write_text("sales;desk\n1,5;1\n2,5;0\n")
+    case = casefolder.giving(casefolder.open_case(folder), Input.DATA, data)
+    _, said = review.read_inputs(case)
+    remarks = data_columns.remarks(case)
+    assert remarks
+    assert set(remarks) <= set(said)
+    script, _ = held(folder, ["", "q"])
+    assert remarks[0][:30] in script.text
+
+
+def test_after_two_replies_of_no_use_the_choices_are_shown_again(with_data):
+    script, _ = held(with_data, ["", "", "", "q"])
+    once = script.text.count("netting_kg")
+    script, _ = held(with_data, ["", "", "q"])
+    assert script.text.count("netting_kg") == 2 * once
+
+
+def test_no_question_repeats_what_the_specification_says(with_data):
+    held(with_data, [*FROM_LISTS, *FIGURES, "q"])
+    _, interview = review.open_interview(with_data)
+    asked = []
+    while (prompt := next_prompt(interview)) is not None:
+        asked.append(prompt.name)
+        value = plausible(prompt)
+        interview = replace(interview, entries=(*interview.entries, *entries_for(prompt, value, "", interview)))
+    settled = ("outcome.transform", "outcome.constant", "outcome.zeros", "estimator", "errors.", "n.printed")
+    settled += ("claim.coefficient", "claim.std_error", "claim.covariate", "effects.")
+    assert [each for each in asked if each.startswith(settled)] == []
+    assert len(asked) <= 12
+
+
+def plausible(prompt):
+    """What a log model of an amount with zeros would be answered with."""
+    known = {"outcome.kind": "amount with zeros", "claim.scale": "percent", "claim.target": "arithmetic mean"}
+    known |= {"mean.form": "multiplicative", "transform.reason": ("normality",), "claim.percent": read_printed("46")}
+    if prompt.name in known:
+        return known[prompt.name]
+    return () if prompt.form in (Form.SEVERAL, Form.CHECKLIST) else prompt.choices[-1].value
 
 
 def test_a_specification_edited_by_hand_is_kept(with_data):
