@@ -159,7 +159,7 @@ def refit(
 @app.command()
 def draft(
     case: Case,
-    formats: Annotated[str, typer.Option("--as", help="formats, separated by commas: docx, md, txt, html, json")] = "docx,md,txt",
+    formats: Annotated[str, typer.Option("--as", help="of docx, md, txt, html, json, with commas")] = "docx,md,txt",
     request: Annotated[bool, typer.Option(help="instead, a short letter asking for what most points wait on")] = False,
     as_json: Json = False,
     plain: Plain = False,

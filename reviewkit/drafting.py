@@ -17,10 +17,12 @@ from reviewkit.specification import read_specification, specification_text
 if TYPE_CHECKING:
     from reviewkit.compose.content import NoteWishes, Repeat
 
-FORMATS = ("docx", "txt", "md")
+FORMATS = ("docx", "md", "txt", "html", "json")
+USUAL = ("docx", "txt", "md")
+"""Formats that are written where none is asked for."""
 
 
-def draft(folder: Path, formats: tuple[str, ...] = FORMATS, request: bool = False) -> tuple[tuple[Path, bool], ...]:
+def draft(folder: Path, formats: tuple[str, ...] = USUAL, request: bool = False) -> tuple[tuple[Path, bool], ...]:
     """Write both notes, or the letter that asks for what is open; each file, and whether another was kept beside it."""
     unknown = [each for each in formats if each not in FORMATS]
     if unknown:
@@ -101,6 +103,14 @@ def _write_format(note: Note, path: Path, ending: str) -> None:
                 from reviewkit.writers.text import write_text
 
                 write_text(note, path)
+            case "html":
+                from reviewkit.writers.html import write_html
+
+                write_html(note, path)
+            case "json":
+                from reviewkit.writers.note_json import write_json
+
+                write_json(note, path)
             case _:
                 raise Refusal("--as", f"`{ending}` is no format of notes", ", ".join(FORMATS))
 

@@ -1,11 +1,14 @@
 """An invented case and its finished notes, and a check that finds numbers which stand nowhere in the case."""
 
 import html
+import json
 import re
 import sys
 import zipfile
 from collections.abc import Iterable, Iterator
+from html.parser import HTMLParser
 from pathlib import Path
+from typing import Any
 from xml.etree import ElementTree
 
 from reviewkit import __version__
@@ -21,7 +24,9 @@ from reviewkit.references import citation, short_citation
 from reviewkit.rulefiles import read_rule_book
 from reviewkit.shipped import rules_folder
 from reviewkit.writers.docx import write_docx
+from reviewkit.writers.html import write_html
 from reviewkit.writers.markdown import write_markdown
+from reviewkit.writers.note_json import write_json
 from reviewkit.writers.text import write_text
 
 BOOK = read_rule_book(rules_folder())
@@ -170,13 +175,15 @@ def case_with(
     return CaseContent(title, facts, decide(facts, BOOK), BOOK, exhibits, wishes or NoteWishes(), repeats)
 
 
-def write_all(case: CaseContent, folder: Path, formats: tuple[str, ...] = ("docx", "md", "txt")) -> list[Path]:
+WRITERS = {"docx": write_docx, "md": write_markdown, "txt": write_text, "html": write_html, "json": write_json}
+
+
+def write_all(case: CaseContent, folder: Path, formats: Iterable[str] = tuple(WRITERS)) -> list[Path]:
     """Both notes in every format."""
-    writers = {"docx": write_docx, "md": write_markdown, "txt": write_text}
     for audience in Audience:
         note = compose(case, audience)
         for ending in formats:
-            writers[ending](note, folder / f"to-{audience}.{ending}")
+            WRITERS[ending](note, folder / f"to-{audience}.{ending}")
     return sorted(folder.iterdir())
 
 
@@ -187,7 +194,40 @@ def shown_text(path: Path) -> str:
     """All that a reader of the file sees or is read out."""
     if path.suffix == ".md":
         return re.sub(r"\]\(figure-[^)]*\)", "]", re.sub(r"\\(.)", r"\1", path.read_text(encoding="utf-8")))
+    if path.suffix == ".html":
+        return _Shown(path.read_text(encoding="utf-8")).text
+    if path.suffix == ".json":
+        return "\n".join(_texts_in(json.loads(path.read_text(encoding="utf-8"))))
     return "\n".join(_docx_lines(path)) if path.suffix == ".docx" else path.read_text(encoding="utf-8")
+
+
+class _Shown(HTMLParser):
+    """The text of a page and the alternative texts of its pictures; its style is not read."""
+
+    def __init__(self, page: str) -> None:
+        super().__init__()
+        self.text, self._in_style = "", False
+        self.feed(page)
+
+    def handle_starttag(self, tag: str, attrs: list[tuple[str, str | None]]) -> None:
+        self._in_style = tag == "style"
+        inline = tag in ("a", "strong", "span")
+        self.text += "" if inline else "\n" + (dict(attrs).get("alt") or "")
+
+    def handle_endtag(self, tag: str) -> None:
+        self._in_style = False
+
+    def handle_data(self, data: str) -> None:
+        self.text += "" if self._in_style else data
+
+
+def _texts_in(content: Any) -> Iterator[str]:
+    """All texts in lists and objects; numbers of figures stand beside them as data."""
+    if isinstance(content, str):
+        yield content
+    elif isinstance(content, list | dict):
+        for each in content.values() if isinstance(content, dict) else content:
+            yield from _texts_in(each)
 
 
 def _docx_lines(path: Path) -> Iterator[str]:

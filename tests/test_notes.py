@@ -55,10 +55,10 @@ def section(note: Note, title: str) -> Section:
 
 
 @pytest.mark.parametrize("audience", list(Audience))
-@pytest.mark.parametrize("ending", ["docx", "md", "txt"])
+@pytest.mark.parametrize("ending", ["docx", "md", "txt", "html", "json"])
 def test_every_number_of_a_finished_file_has_a_source(tmp_path, audience, ending):
     case = case_with()
-    write_all(case, tmp_path)
+    write_all(case, tmp_path, (ending,))
     text = shown_text(tmp_path / f"to-{audience}.{ending}")
     assert numbers_without_source(text, case, compose(case, audience)) == []
 
@@ -293,7 +293,7 @@ def test_what_is_private_reaches_no_file_for_the_authors(tmp_path, monkeypatch):
     for name in ("USER", "LOGNAME", "USERNAME", "HOSTNAME"):
         monkeypatch.setenv(name, "SENTINEL-USER")
     files = write_all(case_with(wishes=WISHES, more=PRIVATE), tmp_path)
-    assert len(files) >= 9
+    assert len(files) >= 13
     for path in files:
         content = everything_in(path)
         allowed = b"SENTINEL-FOR-EDITOR" if path.stem == "to-editor" else b""

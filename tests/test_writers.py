@@ -24,10 +24,11 @@ from reviewkit.note import (
     Section,
     Table,
 )
-from reviewkit.writers.docx import docx_bytes, typeset, write_docx
+from reviewkit.writers.docx import docx_bytes, write_docx
 from reviewkit.writers.markdown import escaped, markdown_of, write_markdown
 from reviewkit.writers.pictures import COLUMN_CM, FULL_CM, draw
 from reviewkit.writers.text import WIDTH, text_of, write_text
+from reviewkit.writers.typesetting import typeset
 
 GOLDEN = Path(__file__).parent / "golden"
 W = "{http://schemas.openxmlformats.org/wordprocessingml/2006/main}"

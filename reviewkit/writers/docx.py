@@ -1,7 +1,6 @@
 """A note as a .docx file with real styles, and nothing in it that tells who made it, where or when."""
 
 import io
-import re
 import zipfile
 from pathlib import Path
 from typing import TYPE_CHECKING, assert_never
@@ -12,6 +11,7 @@ from reviewkit.wording import clean
 from reviewkit.writers.docx_styles import Looks, looks, prepare
 from reviewkit.writers.pictures import FULL_CM, draw
 from reviewkit.writers.table_widths import column_widths
+from reviewkit.writers.typesetting import is_numeric, typeset
 
 if TYPE_CHECKING:
     from docx.document import Document
@@ -20,7 +20,6 @@ if TYPE_CHECKING:
     from docx.text.paragraph import Paragraph as DocxParagraph
 
 _EPOCH = (1980, 1, 1, 0, 0, 0)
-_NUMERIC = re.compile(r"^[<>(]?\s*[-+−]?[\d,.]+(e-?\d+)?\)?$")
 _CM_A_CHARACTER = 0.2  # of the table's text, on average with its padding
 
 
@@ -45,12 +44,6 @@ def docx_bytes(note: Note) -> bytes:
     saved = io.BytesIO()
     document.save(saved)
     return _timeless(saved.getvalue())
-
-
-def typeset(text: str) -> str:
-    """Clean text with real minus signs, and per cent signs tied to their numbers."""
-    minus = re.sub(r"(?<![\w.)\]-])-(?=[\d.]*\d)", "−", clean(text))
-    return re.sub(r"(\d) %", "\\1\u00a0%", minus)
 
 
 def _add(document: "Document", block: Block, style: Looks) -> None:
@@ -102,7 +95,7 @@ def _add_table(document: "Document", block: Table, style: Looks) -> None:
     caption.paragraph_format.keep_with_next = True
     table = document.add_table(rows=1 + len(block.rows), cols=len(block.columns))
     table.autofit = False
-    right = [all(_NUMERIC.match(row[at]) or row[at] == "–" for row in block.rows) for at in range(len(block.columns))]
+    right = [is_numeric(row[at] for row in block.rows) for at in range(len(block.columns))]
     for at, texts in enumerate((block.columns, *block.rows)):
         for cell, text, is_right in zip(table.rows[at].cells, texts, right, strict=True):
             _fill(cell, text, is_right, is_last=at == len(block.rows) and not block.note)

@@ -11,6 +11,7 @@ from reviewkit.note import Block, Excerpt, Figure, Note, Paragraph, Points, Refe
 from reviewkit.safekeeping import write_atomically
 from reviewkit.wording import clean
 from reviewkit.writers.table_widths import column_widths
+from reviewkit.writers.typesetting import is_numeric
 
 WIDTH = 78
 _GAP = 2
@@ -73,7 +74,7 @@ def _wrap(words: str, first: str = "", later: str = "") -> list[str]:
 def _table(table: Table) -> str:
     grid = [[clean(cell) for cell in row] for row in (table.columns, *table.rows)]
     widths = column_widths(grid, WIDTH - _GAP * (len(grid[0]) - 1))
-    right = [_is_numeric([row[at] for row in grid[1:]]) for at in range(len(widths))]
+    right = [is_numeric([row[at] for row in grid[1:]]) for at in range(len(widths))]
     lines = [_lines(row, widths, right) for row in grid]
     rule = "-" * min(sum(widths) + _GAP * (len(widths) - 1), WIDTH)
     body = "\n".join([*lines[0], rule, *(line for row in lines[1:] for line in row)])
@@ -94,11 +95,6 @@ def _lines(row: Sequence[str], widths: Sequence[int], right: Sequence[bool]) -> 
 def _padded(cell: str, width: int, right: bool) -> str:
     space = " " * (width - _wide(cell))
     return space + cell if right else cell + space
-
-
-def _is_numeric(cells: Sequence[str]) -> bool:
-    shown = [cell for cell in cells if cell not in ("", "–")]
-    return bool(shown) and all(re.match(r"^[<>(]?\s*[-+−]?[\d,.]+(e-?\d+)?\)?$", cell) for cell in shown)
 
 
 def _wide(text: str) -> int:
