@@ -20,6 +20,7 @@ from reviewkit.implied import Contrast, MeanModel, coefficient_influence, effect
 from reviewkit.refusals import NotEstimable
 
 Array = npt.NDArray[np.float64]
+Mask = npt.NDArray[np.bool_]
 Progress = Callable[[str], None]
 """Told in a few words what is being done."""
 
@@ -30,6 +31,9 @@ VERY_FEW_ROWS = 10.0
 DRAWS = 999
 _BLOCK_CELLS = 32_000  # of a matrix with a column a row held at once, so that it stays in cache
 _SETTLED = 1e-10
+_MOST_STEPS = 25
+_SINGULAR = 1e-12  # share of the largest size under which a direction is left free by the other clusters
+_ROUNDING = 1e-8
 
 FITTERS: Mapping[str, Callable[[Sample, Array | None], Fit]] = {"ols": fit_least_squares, "poisson": fit_poisson}
 
@@ -58,6 +62,13 @@ class Side:
         assert self.of is not None  # noqa: S101
         residuals = sample.y - sample.offset - sample.basis.z @ on_basis if self.model.smeared else sample.y
         return effect(self.model, self.of, coefficients, residuals, weights)
+
+    def rests_on(self, kept: Mask) -> Array:
+        """The rows whose products with the coefficients make the number from the rows that are kept, (m, k)."""
+        if self.place is not None:
+            return np.eye(len(self.fit.coefficients))[[self.place]]
+        assert self.of is not None  # noqa: S101
+        return np.vstack((self.of.first[kept], self.of.second[kept]))
 
     def influence(self, jackknifed: bool) -> tuple[float, Array]:
         """The compared number and each observation's influence on it, (n,)."""
@@ -142,22 +153,20 @@ def _by_rows(submitted: Side, alternative: Side, rows: int, seed: int, progress:
     joint = Joint(numbers[0], numbers[1], covariance, df, "robust", effective)
     if effective >= FEW_ROWS:
         return joint
-    draws, failed = _bootstrap((submitted, alternative), multiplicity, seed, progress)
+    draws, failed = _bootstrap((submitted, alternative), _observations(difference, multiplicity), seed, progress)
     return replace(joint, method="bootstrap-t", draws=draws, failed_draws=failed)
 
 
-def _bootstrap(
-    sides: tuple[Side, Side], multiplicity: Array, seed: int, progress: Progress | None
-) -> tuple[Array, int]:
+def _bootstrap(sides: tuple[Side, Side], owner: Codes, seed: int, progress: Progress | None) -> tuple[Array, int]:
     """Both numbers and their covariance in resamples of observations; a draw that cannot be fitted is left out."""
     random = np.random.default_rng(seed)
-    owner = np.repeat(np.arange(multiplicity.size), multiplicity.astype(int))
-    width = max(1, min(DRAWS, _BLOCK_CELLS // multiplicity.size))
+    rows = int(owner.max()) + 1
+    width = max(1, min(DRAWS, _BLOCK_CELLS // rows))
     blocks: list[Array] = []
     for start in range(0, DRAWS, width):
         if progress:
             progress(f"resampling rows, {start:,} of {DRAWS:,}")
-        counts = _counts(random, owner, (min(width, DRAWS - start), multiplicity.size))
+        counts = _counts(random, owner, (min(width, DRAWS - start), rows))
         blocks.append(_draws(sides, counts))
     draws = np.concatenate(blocks)
     usable = np.isfinite(draws).all(axis=1)
@@ -165,6 +174,12 @@ def _bootstrap(
     if failed > DRAWS / 2:
         raise NotEstimable("bootstrap", f"{failed:,} of {DRAWS:,} resamples could not be fitted")
     return draws[usable], failed
+
+
+def _observations(difference: Array, multiplicity: Array) -> Codes:
+    """The row of each observation, in the order of the rows' influence, so that draws do not hang on the row order."""
+    order = np.argsort(difference, kind="stable")
+    return np.repeat(order, multiplicity[order].astype(int))
 
 
 def _counts(random: np.random.Generator, owner: Codes, shape: tuple[int, int]) -> Array:
@@ -225,8 +240,18 @@ def _five(sides: Sequence[Side], counts: Array) -> tuple[float, ...]:
 def _resampled(side: Side, counts: Array) -> Side:
     """The same side on the rows drawn, each as often as it was drawn."""
     kept = counts > 0
-    old = side.fit.sample
-    sample = replace(
+    fit = FITTERS[side.fit.estimator](_counted(side.fit.sample, counts), side.fit.on_basis)
+    model, of = side.model, side.of
+    if model is not None and of is not None:
+        model = replace(model, index_offset=model.index_offset[kept], factor=model.factor[kept])
+        of = replace(of, first=of.first[kept], second=of.second[kept])
+    return replace(side, fit=fit, rows=side.rows[kept], model=model, of=of)
+
+
+def _counted(old: Sample, counts: Array) -> Sample:
+    """The rows of a sample that count, each as often as it does."""
+    kept = counts > 0
+    return replace(
         old,
         basis=replace(old.basis, z=old.basis.z[kept]),
         y=old.y[kept],
@@ -235,12 +260,6 @@ def _resampled(side: Side, counts: Array) -> Side:
         offset=old.offset[kept],
         clusters=None,
     )
-    fit = FITTERS[side.fit.estimator](sample, side.fit.on_basis)
-    model, of = side.model, side.of
-    if model is not None and of is not None:
-        model = replace(model, index_offset=model.index_offset[kept], factor=model.factor[kept])
-        of = replace(of, first=of.first[kept], second=of.second[kept])
-    return replace(side, fit=fit, rows=side.rows[kept], model=model, of=of)
 
 
 def _without_each_cluster(submitted: Side, alternative: Side, progress: Progress | None) -> Joint:
@@ -262,7 +281,7 @@ def _without_each_cluster(submitted: Side, alternative: Side, progress: Progress
 def _values_without(side: Side, groups: int, progress: Progress | None) -> Array:
     """The compared number without each cluster, (G,)."""
     assert side.codes is not None  # noqa: S101
-    on_basis = coefficients_without(side.fit, side.codes, groups)
+    on_basis = coefficients_without(side.fit, side.codes, groups, side.rests_on)
     if side.place is not None:
         return np.asarray(on_basis @ side.fit.sample.basis.map[side.place])
     weights = side.fit.sample.weights * side.fit.sample.multiplicity
@@ -274,26 +293,37 @@ def _values_without(side: Side, groups: int, progress: Progress | None) -> Array
     return values
 
 
-def coefficients_without(fit: Fit, codes: Codes, groups: int) -> Array:
+def coefficients_without(fit: Fit, codes: Codes, groups: int, rests_on: Callable[[Mask], Array] | None = None) -> Array:
     """Coefficients on the basis without each cluster, (G, k), from the clusters' own cross-products.
 
     Least squares is exact after one step. For an exponential mean each further step uses the exact score without the
-    cluster and the cross-products of the whole fit less the cluster's; steps end when none moves any number.
+    cluster and the cross-products of the whole fit less the cluster's; what does not settle so is fitted by itself.
+    Where a covariate stands on one cluster alone, such as its dummy, coefficients without it are not unique: that is no
+    matter if the rows of `rests_on` do not see it.
 
     Raises:
-        NotEstimable: The model cannot be fitted without some cluster.
+        NotEstimable: The model, or the number that rests on those rows, cannot be had without some cluster.
     """
     grams, whole = _cluster_grams(fit, codes, groups)
+    inverses, free = _inverses(whole - grams, np.sqrt(np.diag(whole)))
+    for group, directions in free.items():
+        rows = np.eye(len(whole)) if rests_on is None else rests_on(codes != group)
+        if np.abs(rows @ fit.sample.basis.map @ directions).max() > _ROUNDING * np.abs(rows).max():
+            raise NotEstimable("leaving out a cluster", "a covariate stands on one cluster alone")
     z = fit.sample.basis.z
     score = cluster_sums((fit.residuals * fit.sample.weights * fit.sample.multiplicity)[:, None] * z, codes, groups)
-    left = whole - grams
-    scale = np.sqrt(np.diag(whole))
-    if np.linalg.cond(left / np.outer(scale, scale)).max() > 1e12:
-        raise NotEstimable("leaving out a cluster", "a covariate stands on one cluster alone")
-    on_basis = fit.on_basis - np.linalg.solve(left, score[:, :, None])[:, :, 0]
-    if fit.estimator == "ols":
-        return on_basis
-    return _settle_without(fit, codes, on_basis, left)
+    on_basis = fit.on_basis - np.einsum("gij,gj->gi", inverses, score)
+    return on_basis if fit.estimator == "ols" else _settle_without(fit, codes, on_basis, inverses)
+
+
+def _inverses(left: Array, scale: Array) -> tuple[Array, dict[int, Array]]:
+    """Inverses of the cross-products (G, k, k), and for groups without one the directions (k, m) that they leave free."""
+    sizes, vectors = np.linalg.eigh(left / np.outer(scale, scale))
+    free = sizes <= _SINGULAR * sizes[:, -1:]
+    vectors = vectors / scale[:, None]
+    parts = np.divide(1.0, sizes, out=np.zeros_like(sizes), where=~free)
+    inverses = (vectors * parts[:, None, :]) @ vectors.transpose(0, 2, 1)
+    return inverses, {int(group): vectors[group][:, free[group]] for group in np.flatnonzero(free.any(axis=1))}
 
 
 def _cluster_grams(fit: Fit, codes: Codes, groups: int) -> tuple[Array, Array]:
@@ -309,22 +339,37 @@ def _cluster_grams(fit: Fit, codes: Codes, groups: int) -> tuple[Array, Array]:
     return grams, grams.sum(axis=0)
 
 
-def _settle_without(fit: Fit, codes: Codes, on_basis: Array, left: Array) -> Array:
+def _settle_without(fit: Fit, codes: Codes, on_basis: Array, inverses: Array) -> Array:
     z, sample = fit.sample.basis.z, fit.sample
     weighted = (sample.weights * sample.multiplicity)[:, None] * z
     groups, width = len(on_basis), max(1, _BLOCK_CELLS // len(z))
     seen = weighted.T @ sample.y - cluster_sums(weighted * sample.y[:, None], codes, groups)
-    for _ in range(50):
-        own = np.exp(np.einsum("ij,ij->i", z, on_basis[codes]) + sample.offset)
-        score = seen + cluster_sums(weighted * own[:, None], codes, groups)
-        for start in range(0, groups, width):
-            block = slice(start, start + width)
-            score[block] -= np.exp(on_basis[block] @ z.T + sample.offset) @ weighted
-        step = np.linalg.solve(left, score[:, :, None])[:, :, 0]
-        on_basis = on_basis + step
-        if np.abs(step).max() < _SETTLED:
-            return on_basis
-    raise NotEstimable("leaving out a cluster", "the estimate without some cluster does not come to rest")
+    moving = np.ones(groups, dtype=bool)
+    with np.errstate(over="ignore", invalid="ignore"):  # what runs away is fitted by itself
+        for _ in range(_MOST_STEPS):
+            own = np.exp(np.einsum("ij,ij->i", z, on_basis[codes]) + sample.offset)
+            score = seen + cluster_sums(weighted * own[:, None], codes, groups)
+            for start in range(0, groups, width):
+                block = slice(start, start + width)
+                score[block] -= np.exp(on_basis[block] @ z.T + sample.offset) @ weighted
+            step = np.einsum("gij,gj->gi", inverses, score)
+            on_basis = on_basis + step
+            moving = ~(np.abs(step).max(axis=1) < _SETTLED)
+            if not moving.any():
+                return on_basis
+    for group in np.flatnonzero(moving):
+        on_basis[group] = _fitted_without(fit, codes == group)
+    return on_basis
+
+
+def _fitted_without(fit: Fit, left_out: Mask) -> Array:
+    counts = np.where(left_out, 0.0, fit.sample.multiplicity)
+    try:
+        return FITTERS[fit.estimator](_counted(fit.sample, counts), fit.on_basis).on_basis
+    except NotEstimable as error:
+        raise NotEstimable(
+            "leaving out a cluster", "the estimate without some cluster does not come to rest"
+        ) from error
 
 
 def effective_clusters(fit: Fit, codes: Codes, groups: int, place: int) -> float:

@@ -6,9 +6,11 @@ from pathlib import Path
 import numpy as np
 import pandas as pd
 import pytest
+from specifying import refit
 
 from reviewkit import casefolder, drafting, review, unattended
 from reviewkit.casefolder import Input
+from reviewkit.readers.tables import Table
 
 ANSWERS = """
 [specification.outcome]
@@ -94,6 +96,19 @@ def usual(tmp_path_factory: pytest.TempPathFactory) -> dict[str, str]:
 def test_the_case_says_something(usual: dict[str, str]) -> None:
     assert "model of the mean" in usual["to-authors"]
     assert "positive" in usual["to-authors"]
+
+
+def test_row_order_does_not_change_resamples() -> None:
+    """Few rows carry the error, so that rows are resampled: the same observations are drawn in any order of rows."""
+    random = np.random.default_rng(2)
+    rows = pd.DataFrame({"y": random.lognormal(0, 1.5, 80), "group": np.tile([0.0, 1.0], 40)})
+    found = []
+    for frame in (rows, rows.sample(frac=1, random_state=1)):
+        data = Table("data.csv", frame, "0" * 64, {})
+        tables = {"outcome": {"column": "y", "transform": "log"}, "model": {"terms": ["group"]}}
+        found.append(refit(data, **tables, errors={"kind": "robust"}).comparison[0])
+    assert found[0].method == found[1].method == "bootstrap-t"
+    assert found[0].interval == pytest.approx(found[1].interval, rel=1e-9)
 
 
 @pytest.mark.parametrize("errors", ["cluster", "robust"])

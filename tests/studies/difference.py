@@ -29,7 +29,7 @@ from specifying import specification, table
 from reviewkit.comparison import LEVEL, agrees, differs
 from reviewkit.design_matrix import Design, build_design
 from reviewkit.fitting import fit_model
-from reviewkit.joint import _BLOCK_CELLS, DRAWS, FEW_ROWS, Joint, Side, _counts, estimate_joint
+from reviewkit.joint import _BLOCK_CELLS, DRAWS, FEW_ROWS, Joint, Side, _counts, _observations, estimate_joint
 from reviewkit.specification import Estimator, Specification
 from studies.record import save
 
@@ -119,11 +119,12 @@ def sums_joint(y: Any, second: Any) -> Joint:
     gap = np.empty(y.size)
     for here in (second, ~second):
         gap[here] = (y[here] / y[here].mean() - 1 - log_y[here] + log_y[here].mean()) / (here.sum() - 1)
+    gap[~second] *= -1
     effective = float((gap**2).sum() ** 2 / (gap**4).sum())
     joint = Joint(s, a, np.array([[v_s, c], [c, v_a]]), y.size - 2.0, "robust", effective)
     if effective >= FEW_ROWS:
         return joint
-    random, owner = np.random.default_rng(1), np.arange(y.size)
+    random, owner = np.random.default_rng(1), _observations(gap, np.ones(y.size))
     width = max(1, min(DRAWS, _BLOCK_CELLS // y.size))
     sizes = [min(width, DRAWS - start) for start in range(0, DRAWS, width)]
     draws = [_numbers(_counts(random, owner, (size, y.size)) @ columns) for size in sizes]
