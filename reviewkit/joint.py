@@ -317,7 +317,7 @@ def coefficients_without(fit: Fit, codes: Codes, groups: int, rests_on: Callable
 
 
 def _inverses(left: Array, scale: Array) -> tuple[Array, dict[int, Array]]:
-    """Inverses of the cross-products (G, k, k), and for groups without one the directions (k, m) that they leave free."""
+    """Inverses of cross-products, (G, k, k); for groups that have none, the directions (k, m) that they leave free."""
     sizes, vectors = np.linalg.eigh(left / np.outer(scale, scale))
     free = sizes <= _SINGULAR * sizes[:, -1:]
     vectors = vectors / scale[:, None]

@@ -122,3 +122,47 @@ def test_two_saturated_models_give_the_same_number_however_small_it_is() -> None
     done = one(refit(data, outcome={"column": "y"}, model={"terms": ["treated"]}), Kind.MODEL)
     assert done.conclusion is None
     assert done.why == "both models give the same number by construction"
+
+
+# --- leaving out a cluster ------------------------------------------------------------------------------------
+
+
+def refitted_without(data: Table, cluster: int, **tables: Any) -> Comparison:
+    rest = Table("", data.frame[data.frame.cluster != cluster].reset_index(drop=True), "", {})
+    return one(refit(rest, **tables), Kind.MODEL)
+
+
+def assert_error_by_refitting(data: Table, **tables: Any) -> None:
+    """Compare the error of the difference with that from refitting all of it without each cluster."""
+    whole = one(refit(data, **tables, errors=CLUSTERED), Kind.MODEL)
+    clusters = sorted(set(data.frame.cluster))
+    apart = np.array([refitted_without(data, each, **tables).difference for each in clusters], dtype=float)
+    share = (len(clusters) - 1) / len(clusters)
+    assert whole.std_error == pytest.approx((share * ((apart - whole.difference) ** 2).sum()) ** 0.5, rel=1e-6)
+
+
+def test_dummies_of_the_clusters_do_not_stand_in_the_way() -> None:
+    data = amounts(rows=240, clusters=12)
+    data = changed(data, treated=np.random.default_rng(2).integers(0, 2, 240).astype(float))
+    for outcome in (LOG_PLUS, POSITIVE):
+        assert_error_by_refitting(data, outcome=outcome, model={"terms": ["treated", "factor(cluster)"]})
+
+
+def test_a_cluster_that_outweighs_all_others_can_be_left_out() -> None:
+    data, random = amounts(), np.random.default_rng(4)
+    large = np.arange(400) < 280
+    data = changed(
+        data,
+        cluster=np.where(large, 0, data.frame.cluster + 1),
+        treated=random.integers(0, 2, 400).astype(float),
+        y=np.where(large, 50.0, 1.0) * data.frame.y,
+    )
+    terms = ["treated", "log(size)", "treated:log(size)"]
+    assert_error_by_refitting(data, outcome=LOG_PLUS, model={"terms": terms, "focus": ["treated"]})
+
+
+def test_a_number_that_rests_on_one_cluster_is_refused() -> None:
+    data = amounts()
+    data = changed(data, treated=((data.frame.cluster == 3) & (np.arange(400) > 200)).astype(float))
+    found = refit(data, outcome=LOG_PLUS, model={"terms": ["treated", "log(size)"]}, errors=CLUSTERED)
+    assert all("stands on one cluster alone" in (each.why or "") for each in found.comparison)
