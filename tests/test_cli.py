@@ -173,6 +173,15 @@ def test_a_case_from_files_alone_gives_both_notes(case, capsys):
             assert (case / f"{name}.{ending}").stat().st_size > 100
 
 
+def test_a_page_and_data_are_drafted_where_they_are_asked_for(case, capsys):
+    answered(case)
+    assert run(["draft", str(case), "--as", "html, json"]) == 0
+    for name in ("to-authors", "to-editor"):
+        assert (case / f"{name}.html").read_bytes().startswith(b"<!DOCTYPE html>")
+        assert json.loads((case / f"{name}.json").read_bytes())["audience"] == name.removeprefix("to-")
+    assert not (case / "to-authors.docx").exists()
+
+
 def test_a_case_alone_is_shown(case, capsys):
     run(["show", str(case)])
     shown = capsys.readouterr().out
@@ -329,6 +338,62 @@ def test_a_lone_specification_is_re_estimated(specification):
     found = json.loads(done.stdout)
     assert found["models"][0]["submitted"]["n"] == 60
     assert {each["subject"] for each in found["findings"]} >= {"model:main", "claim:main"}
+
+
+def without_alternative(specification):
+    """A submission that can be estimated, with negative values that no Poisson model can have."""
+    text = specification.read_text().replace('"log"', '"asinh"')
+    specification.write_text(text)
+    data = specification.parent / "shops.csv"
+    data.write_text(data.read_text().replace("50,0", "-50,0", 1))
+    return specification
+
+
+@pytest.mark.parametrize("more", [[], ["--json"], ["--json", "--alert-on", "minor"]])
+def test_a_wanted_alternative_that_cannot_be_estimated_is_status_3_and_the_rest_is_written(specification, more, capsys):
+    assert run(["refit", str(without_alternative(specification)), *more]) == 3
+    said = capsys.readouterr().out
+    assert "staff" in said
+    assert not more or json.loads(said)["models"][0]["submitted"]["n"] == 60
+
+
+def test_a_poisson_submission_wants_no_alternative(specification):
+    text = specification.read_text().replace('"log"', '"none"').replace("[model]", '[model]\nestimator = "poisson"')
+    specification.write_text(text)
+    assert run(["refit", str(specification), "--json"]) == 0
+
+
+def test_progress_is_silent_in_a_short_refit(specification):
+    done = reviewkit("refit", specification, "--plain")
+    assert done.returncode == 0
+    assert done.stderr == ""
+
+
+@pytest.mark.parametrize(
+    ("line", "missing", "settled"),
+    [
+        ("xtreg sales staff, mle", "estimator", '[specification.model]\nestimator = "ols"\n'),
+        ("glm(sales ~ staff, family = tweedie)", "estimator", '[specification.model]\nestimator = "ols"\n'),
+    ],
+)
+def test_a_line_in_a_file_of_answers_is_never_completed_in_silence(case, specification, line, missing, settled, capsys):
+    answers = specification.parent / "answers.toml"
+    answers.write_text(f"[specification]\ndata = 'shops.csv'\nline = '{line}'\n")
+    assert run(["interview", str(case), "--answers", str(answers)]) == 2
+    said = capsys.readouterr().err
+    assert f"does not settle the {missing}" in said
+    errors = "[specification.errors]\nkind = 'robust'\n"
+    answers.write_text(answers.read_text() + settled + errors)
+    assert run(["interview", str(case), "--answers", str(answers)]) == 0
+
+
+def test_the_summary_names_the_points_the_open_and_the_next_command(case, capsys):
+    answered(case)
+    said = capsys.readouterr().out
+    assert "Raised so far:" in said
+    assert "  major: " in said or "  minor: " in said
+    assert "Open: " in said
+    assert "Next: reviewkit " in said
 
 
 def test_a_wrong_specification_is_one_line_and_status_2(specification, capsys):
