@@ -14,7 +14,7 @@ from reviewkit.joint import Progress, Side, effective_clusters, estimate_joint
 from reviewkit.model_table import percent_why_not
 from reviewkit.refusals import NotEstimable
 from reviewkit.specification import Estimator, PerExposure, Specification, Transform, Zeros
-from reviewkit.wording import counted
+from reviewkit.wording import counted, joined
 
 Mask = npt.NDArray[np.bool_]
 
@@ -22,6 +22,7 @@ SEED = 1
 """Of the bootstrap, so that a note can be repeated to the digit."""
 FEWEST_CLUSTERS = 8
 """Treated, untreated or effective clusters below which a comparison stays unsettled; common practice, no source."""
+_ROUNDING = 1e-8
 
 
 @dataclass(frozen=True, slots=True)
@@ -115,7 +116,26 @@ def _coefficient_side(task: Task, made: FittedModel, focus: Focus) -> Side:
 
 
 def _implied_side(task: Task, made: FittedModel, mean: MeanModel, of: tuple[Focus, Scale]) -> Side:
+    _check_within_reach(task, made, of)
     return Side(made.fit, made.rows, _codes(task, made), None, mean, contrast(made.design, *of))
+
+
+def _check_within_reach(task: Task, made: FittedModel, of: tuple[Focus, Scale]) -> None:
+    """Refuse an effect at rows where a left-out column is no longer the combination that it is in the data."""
+    if not made.collinear:
+        return
+    whole = task.design.where(np.isin(np.arange(task.design.rows), made.rows), "not in this model")
+    out = [whole.names.index(name) for name, _ in made.collinear]
+    kept = np.delete(np.arange(len(whole.names)), out)
+    scale = np.linalg.norm(whole.x[:, kept], axis=0)
+    shares = np.linalg.lstsq(whole.x[:, kept] / scale, whole.x[:, out])[0] / scale[:, None]
+    effect = contrast(whole, *of)
+    for rows in (effect.first, effect.second):
+        gaps = np.abs(rows[:, out] - rows[:, kept] @ shares).max(axis=0)
+        beyond = gaps > _ROUNDING * np.abs(rows).max()
+        if beyond.any():
+            names = joined([whole.names[out[place]] for place in np.flatnonzero(beyond)])
+            raise NotEstimable(f"term `{of[0].term}`", f"its effect rests on {names}, of which these rows tell nothing")
 
 
 def _check_told_apart(made: FittedModel, focus: Focus) -> None:

@@ -88,6 +88,25 @@ def test_a_focal_term_that_separation_makes_collinear_is_not_compared() -> None:
     assert all("cannot be told from that of other" in (each.why or "") for each in found.comparison)
 
 
+def test_an_effect_that_rests_on_a_cell_without_rows_is_not_made_up() -> None:
+    data = amounts()
+    cell = (data.frame.region == "north") & (data.frame.treated == 1)
+    data = changed(data, y=np.where(cell, 0.0, data.frame.y))
+    found = refit(data, outcome=LOG_PLUS, model={"terms": ["factor(region)*treated"], "focus": ["treated"]})
+    assert one(found, Kind.MODEL).submitted is None
+    assert "rests on factor(region)[north]:treated" in (one(found, Kind.MODEL).why or "")
+
+
+def test_a_class_that_is_lost_leaves_the_effects_of_the_others() -> None:
+    data = amounts()
+    data = changed(data, y=np.where(data.frame.region == "north", 0.0, data.frame.y))
+    found = refit(data, outcome=LOG_PLUS, model={"terms": ["factor(region)", "treated"], "focus": ["factor(region)"]})
+    north, west = (next(e for e in found.comparison if e.term == f"factor(region)[{c}]") for c in ("north", "west"))
+    assert north.submitted is None
+    assert "does not vary" in (north.why or "")
+    assert west.conclusion is not None
+
+
 # --- rows ----------------------------------------------------------------------------------------------------
 
 
@@ -129,7 +148,7 @@ def test_two_saturated_models_give_the_same_number_however_small_it_is() -> None
 
 def refitted_without(data: Table, cluster: int, **tables: Any) -> Comparison:
     rest = Table("", data.frame[data.frame.cluster != cluster].reset_index(drop=True), "", {})
-    return one(refit(rest, **tables), Kind.MODEL)
+    return one(refit(rest, **tables, errors=CLUSTERED), Kind.MODEL)
 
 
 def assert_error_by_refitting(data: Table, **tables: Any) -> None:
