@@ -96,6 +96,10 @@ class Design:
         """n: rows, or the sum of frequency weights."""
         return float(self.rows if self.multiplicity is None else self.multiplicity.sum())
 
+    def share(self, mask: Mask) -> float:
+        """Share of the observations that the rows of a mask (n,) hold."""
+        return float(np.average(mask, weights=self.multiplicity))
+
     @property
     def offset(self) -> Array:
         """log(exposure), (n,); zero without one."""

@@ -4,7 +4,6 @@ from collections.abc import Mapping
 from contextlib import suppress
 from dataclasses import dataclass, replace
 
-import numpy as np
 from scipy import stats
 
 from reviewkit.arithmetic import PercentReadings, no_percent, percent_readings
@@ -127,9 +126,9 @@ def _readings(b: float, se: float, df: float | None, classical_df: float | None)
 def percent_why_not(outcome: Outcome, estimator: Estimator, column: DesignColumn, design: Design) -> str | None:
     """Why a coefficient has no reading in percent; None where it has one."""
     if estimator is Estimator.OLS and outcome.transform is not Transform.LOG:
-        return _transform_why_not(outcome, design.y)
+        return _transform_why_not(outcome, design)
     if estimator is Estimator.OLS and outcome.zeros is Zeros.REPLACED:
-        return f"zeros were replaced by {number(outcome.replacement)} before the log, {_zeros(design.y)}"
+        return f"zeros were replaced by {number(outcome.replacement)} before the log, {_zeros(design)}"
     if column.name == CONSTANT:
         return "the constant has no change to read"
     part = column.parts[0]
@@ -142,19 +141,19 @@ def percent_why_not(outcome: Outcome, estimator: Estimator, column: DesignColumn
     return None if not others or siblings else f"{own} also stands in {others[0].name}"
 
 
-def _transform_why_not(outcome: Outcome, y: "np.typing.NDArray[np.float64]") -> str:
+def _transform_why_not(outcome: Outcome, design: Design) -> str:
     match outcome.transform:
         case Transform.LOG_PLUS:
-            return f"constant added, {_zeros(y)}"
+            return f"constant added, {_zeros(design)}"
         case Transform.ASINH:
-            return f"inverse hyperbolic sine, {_zeros(y)}"
+            return f"inverse hyperbolic sine, {_zeros(design)}"
         case Transform.NONE:
             return "the outcome is in its own unit"
     return f"a {outcome.transform} is not read in percent"
 
 
-def _zeros(y: "np.typing.NDArray[np.float64]") -> str:
-    zeros = float((y == 0).mean())
+def _zeros(design: Design) -> str:
+    zeros = design.share(design.y == 0)
     return f"{share(zeros)} zeros" if zeros else "no zeros"
 
 
@@ -205,12 +204,17 @@ def named_prints(spec: Specification, names: tuple[str, ...]) -> tuple[tuple[str
     """
     found = []
     for name, printed in spec.printed_terms:
-        meant = [each for each in names if each == name or each.startswith(f"{name}[")]
+        meant = [each for each in names if each == name] or [each for each in names if _is_class_of(each, name)]
         if len(meant) != 1:
             allowed = ", ".join(meant or names[:12])
             raise Refusal(f"printed.terms.{name}", "it is not one of the model's terms", allowed, "Check its spelling")
         found.append((meant[0], printed))
     return tuple(found)
+
+
+def _is_class_of(name: str, factor: str) -> bool:
+    """Whether a column is that of one class of a factor, and no product with it."""
+    return name.startswith(f"{factor}[") and name.endswith("]") and "]:" not in name
 
 
 def agreements(spec: Specification, table: ModelTable) -> tuple[Agreement, ...]:

@@ -39,11 +39,11 @@ def refit_facts(found: "Reestimation", design: Design, clusters: Mapping[str, fl
 def _outcome_facts(found: "Reestimation", design: Design) -> dict[str, Value | None]:
     y, outcome = design.y, found.specification.outcome
     positive = y[y > 0]
-    zeros = float((y == 0).mean())
+    zeros = design.share(y == 0)
     shifted = outcome.transform is Transform.LOG_PLUS
     return {
         "outcome.zero_share": zeros,
-        "outcome.negative_share": float((y < 0).mean()),
+        "outcome.negative_share": design.share(y < 0),
         "outcome.distinct_values": float(np.unique(y).size),
         "outcome.smallest_positive": float(positive.min()) if positive.size else None,
         "outcome.lower_quartile_positive": float(np.quantile(positive, 0.25)) if positive.size else None,

@@ -185,3 +185,26 @@ def test_a_number_that_rests_on_one_cluster_is_refused() -> None:
     data = changed(data, treated=((data.frame.cluster == 3) & (np.arange(400) > 200)).astype(float))
     found = refit(data, outcome=LOG_PLUS, model={"terms": ["treated", "log(size)"]}, errors=CLUSTERED)
     assert all("stands on one cluster alone" in (each.why or "") for each in found.comparison)
+
+
+# --- what a row stands for ------------------------------------------------------------------------------------
+
+
+def test_the_share_of_zeros_counts_observations_and_not_rows() -> None:
+    data = amounts(rows=120, clusters=20)
+    again = Table("", data.frame.loc[data.frame.index.repeat(data.frame.w.astype(int))].reset_index(drop=True), "", {})
+    model: dict[str, Any] = {"terms": ["treated"]}
+    weighted = refit(data, outcome=LOG_PLUS, model={**model, "weights": {"column": "w", "kind": "frequency"}})
+    repeated = refit(again, outcome=LOG_PLUS, model=model)
+    shares = [next(f.value for f in each.facts if f.name == "outcome.zero_share") for each in (weighted, repeated)]
+    whys = [each.submitted.terms[1].readings.percent_why_not for each in (weighted, repeated)]
+    assert shares[0] == pytest.approx(shares[1])
+    assert whys[0] == whys[1]
+
+
+def test_a_printed_factor_without_its_class_is_not_mistaken_for_a_product() -> None:
+    data = amounts()
+    two = changed(data, region=np.where(data.frame.region == "west", "east", data.frame.region))
+    printed = {"terms": {"factor(region)": {"estimate": "0.1"}}}
+    found = refit(two, outcome=LOG_PLUS, model={"terms": ["factor(region)*treated"]}, printed=printed)
+    assert [each.term for each in found.agreement] == ["factor(region)[north]"]

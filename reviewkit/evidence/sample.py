@@ -30,7 +30,7 @@ def sample_exhibit(design: Design, tables: tuple[ModelTable, ModelTable | None],
         rows.append(("observations (frequency weights)", float(design.observations)))
     if table.clusters:
         rows.append(("clusters", table.clusters))
-    zeros = float((y == 0).mean())
+    zeros = design.share(y == 0)
     rows += [("zeros, percent", 100 * zeros), ("distinct values", int(np.unique(y).size))]
     rows += [("mean", float(y.mean())), ("standard deviation", float(y.std(ddof=1)) if y.size > 1 else None)]
     rows += _quartiles("quartile", y)
