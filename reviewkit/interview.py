@@ -78,7 +78,7 @@ def next_prompt(interview: Interview) -> Prompt | None:
 def entries_for(prompt: Prompt, value: Value, place: str, interview: Interview) -> tuple[Entry, ...]:
     """What an answer adds to the log; for a screen of readings, or a list of questions, one entry each."""
     if prompt.name == CHECKLIST:
-        return _checked(prompt, value, interview)
+        return _checked(prompt, value, place, interview)
     if prompt.name != CONFIRM:
         return (Entry(Act.ANSWER, prompt.name, prompt.subject, value, place),)
     wrong = value if isinstance(value, tuple) else ()
@@ -210,13 +210,13 @@ def _checklist(definitions: tuple[FactDefinition, ...]) -> Prompt:
     )
 
 
-def _checked(prompt: Prompt, value: Value, interview: Interview) -> tuple[Entry, ...]:
+def _checked(prompt: Prompt, value: Value, place: str, interview: Interview) -> tuple[Entry, ...]:
     """An entry for each question of the list: yes, partly where marked, else no."""
     chosen = value if isinstance(value, tuple) else ()
     marked = {each.rstrip("p"): "partly" if each.endswith("p") else "yes" for each in chosen}
     together = f"{TOGETHER}: {prompt.choices[0].value}"
     return tuple(
-        Entry(Act.ANSWER, each.value, _subject(interview.book.vocabulary[each.value]), said, text=together)
+        Entry(Act.ANSWER, each.value, _subject(interview.book.vocabulary[each.value]), said, place, text=together)
         for number, each in enumerate(prompt.choices, start=1)
         for said in (marked.get(str(number), "no"),)
     )

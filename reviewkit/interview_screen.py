@@ -210,6 +210,8 @@ def _answered(session: Session, prompt: Prompt, reply: Answered) -> Session | No
         labels = {each.value: each.shown for each in prompt.choices}
         shown = labels.get(reply.value) if isinstance(reply.value, str) else None
         session.screen.faint(f"= {shown or shown_value(prompt.definition, reply.value)}", "  ")
+    if prompt.form is Form.CHECKLIST and isinstance(reply.value, tuple):
+        session.screen.faint(f"= yes or partly: {', '.join(reply.value) or 'none'}; no: the others", "  ")
     if prompt.name.startswith(SPECIFYING):
         return _specified(session, prompt, reply.value)
     _say_what_differs(session, prompt, reply.value)
@@ -341,6 +343,7 @@ def _finished(session: Session) -> Session:
 def _reestimate(case: CaseFolder, screen: Screen) -> None:
     """Re-estimate between two questions; what cannot be estimated is said, and the questions go on."""
     try:
+        review.load_numbers()
         with telling(lambda text: screen.faint(text, "  ")) as tell:
             estimated = review.refit(case, progress=tell)
     except Refusal as refusal:
@@ -348,6 +351,8 @@ def _reestimate(case: CaseFolder, screen: Screen) -> None:
         return
     for warning in estimated.warnings:
         screen.say(warning, "  ")
+    for line in review.beside_print(estimated):
+        screen.say(line, "  ")
     screen.say("Re-estimated: what the data show need not be asked.", "  ")
 
 

@@ -120,10 +120,15 @@ def _counting(review: Review) -> tuple[Fact, ...]:
 
 def _known_lines(review: Review, all_facts: bool) -> tuple[str, ...]:
     used = {name for rule in review.book.rules for condition in rule.conditions for name in condition.names}
-    shown = [each for each in _counting(review) if all_facts or each.name in used]
+    shown = [each for each in _counting(review) if all_facts or (each.name in used and not _is_detail(each.name))]
     lines = [_fact_line(review, each) for each in shown]
     hidden = len(_counting(review)) - len(shown)
     return (*lines, *((f"and {hidden} more; `--all` lists them",) if hidden else ()))
+
+
+def _is_detail(name: str) -> bool:
+    """Whether `refit` shows it better than a list of facts."""
+    return name.startswith("refit.") and name not in ("refit.reproduced", "refit.conclusion")
 
 
 def _fact_line(review: Review, fact: Fact) -> str:

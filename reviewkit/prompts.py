@@ -137,7 +137,7 @@ def _of_enter(prompt: Prompt) -> Reply:
 
 
 def _with_place(prompt: Prompt, text: str) -> tuple[str, str]:
-    if prompt.definition is None:
+    if prompt.definition is None and prompt.form is not Form.CHECKLIST:
         return text, ""
     answer, _, place = text.partition(" @")
     return answer.strip(), place.strip()

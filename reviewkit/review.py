@@ -20,7 +20,7 @@ from reviewkit.specification import Specification, read_specification, specifica
 from reviewkit.specification_parts import specification_values
 from reviewkit.specified import covariate_fact, specification_facts
 from reviewkit.specifying import next_step
-from reviewkit.wording import counted
+from reviewkit.wording import counted, estimate_with_error
 
 if TYPE_CHECKING:
     from reviewkit.readers.tables import Table
@@ -261,6 +261,21 @@ def findings_of(estimated: "Reestimation") -> tuple[Finding, ...]:
     return decide(
         linked.adding(specification_facts(estimated.specification, MAIN, CLAIM)).adding(estimated.facts), rule_book()
     )
+
+
+def beside_print(estimated: "Reestimation") -> tuple[str, ...]:
+    """What the data give for the term in focus and the number of rows, beside what the paper prints."""
+    spec, lines = estimated.specification, []
+    for name, printed in spec.printed_terms:
+        row = estimated.submitted.term(name)
+        figures = [figure.text for figure in (printed.estimate, printed.std_error) if figure is not None]
+        if row is not None and figures:
+            found = estimate_with_error(row.estimate, row.std_error)
+            lines.append(f"{name}: estimate (error) {found} from the data; printed: {', '.join(figures)}.")
+    if spec.printed_n is not None:
+        used = counted(estimated.submitted.observations, "row")
+        lines.append(f"{used} used; printed: {spec.printed_n.text}.")
+    return tuple(lines)
 
 
 def _table(path: Path, progress: Progress | None) -> "Table":

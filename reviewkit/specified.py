@@ -45,7 +45,7 @@ _ZEROS_WORDS = {Zeros.DROPPED: "dropped", Zeros.REPLACED: "replaced by a small v
 
 def specification_facts(spec: Specification, model: str, claim: str) -> tuple[Fact, ...]:
     """All that a specification settles about its model, and the printed figures of the claim's term."""
-    source = Source(SourceKind.SPECIFICATION, "specification")
+    source = Source(SourceKind.SPECIFICATION)
     held = [(name, value, model) for name, value in _of_model(spec).items()]
     held += [(name, value, claim) for name, value in _of_claim(spec).items()]
     return tuple(
@@ -102,5 +102,5 @@ def covariate_fact(spec: Specification, kinds: Mapping[str, str], claim: str) ->
         case Column(column):
             words = {"two-valued": "two-valued", "number": "continuous", "whole number": "continuous"}
             value = words.get(kinds.get(column, ""), "")
-    source = Source(SourceKind.COLUMN, column)
+    source = Source(SourceKind.COLUMN, f"column {column}")
     return (Fact("claim.covariate", value, Standing.DONE, source, claim),) if value else ()

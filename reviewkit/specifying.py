@@ -5,6 +5,7 @@ from typing import Any
 
 from reviewkit.answers import SPECIFYING
 from reviewkit.expressions import columns_of, read_terms
+from reviewkit.printed import Printed
 from reviewkit.prompts import Choice, Form, Prompt
 from reviewkit.refusals import Refusal
 from reviewkit.specification import ERROR_TYPES, ErrorKind, Estimator, Transform, specification_from
@@ -54,7 +55,9 @@ def next_step(state: Specifying) -> Prompt | None:
 
 def problem_with(state: Specifying) -> str:
     """Why the answers so far make no specification; empty where they do, or where too much is still missing."""
-    values = specification_values(state)
+    values, n = specification_values(state), state.answers.get("n")
+    if isinstance(n, Printed) and n.value != int(n.value):
+        return f"`{n.text}` reads as {n.value:g}, and a number of observations is whole: type it without a point."
     if not values["outcome"].get("column"):
         return ""
     model = values["model"] if values["model"].get("terms") else {**values["model"], "terms": [A_TERM_TO_COME]}

@@ -321,6 +321,7 @@ LIST = Prompt("checklist", "?", Form.CHECKLIST, choices=(Choice("a"), Choice("b"
 @pytest.mark.parametrize(("typed", "value"), [("1", ("1",)), ("1, 2p", ("1", "2p")), ("none", ()), ("2 2", ("2",))])
 def test_a_list_takes_numbers_and_parts(typed, value):
     assert read_reply(LIST, typed) == Answered(value)
+    assert read_reply(LIST, f"{typed} @ p. 4") == Answered(value, "p. 4")
 
 
 @pytest.mark.parametrize("typed", ["3", "0", "1p", "yes", "", "²"])

@@ -182,6 +182,8 @@ def test_lists_build_the_specification_and_what_the_data_show_is_not_asked(with_
     spec = review.specification_of(casefolder.open_case(with_data))
     assert (spec.outcome.column, spec.errors.by, spec.printed_n.text) == ("netting_kg", ("harbour",), "2,931")
     assert "Re-estimated" in script.text
+    assert "bay: estimate (error) 0.506 (0.064) from the data; printed: 0.506, 0,064." in script.text
+    assert "2,931 rows used; printed: 2,931." in script.text
     known = review.look(with_data).facts
     assert known.known("outcome.zero_share", "model:main").value > 0.1
     assert known.known("claim.coefficient", "claim:main").value.text == "0.506"
@@ -219,6 +221,12 @@ def test_a_pasted_line_is_taken_at_any_question_about_the_model(with_data, befor
     assert entries[-1].understood["errors"]["by"] == ["harbour"]
     assert "understood: errors" in script.text
     assert "may already be a log" in script.text
+
+
+def test_a_number_of_observations_with_a_point_is_asked_again(with_data):
+    script, _ = held(with_data, [*FROM_LISTS, "", "", "2.931", "q"])
+    assert "`2.931` reads as 2.931" in script.text
+    assert not casefolder.open_case(with_data).specification().exists()
 
 
 def test_names_of_columns_are_no_model_line(with_data):
