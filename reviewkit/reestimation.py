@@ -10,6 +10,7 @@ from reviewkit.comparison import LEVEL, Comparison, Kind
 from reviewkit.design_matrix import Design, build_design
 from reviewkit.evidence.baseline import baseline_exhibit
 from reviewkit.evidence.comparison import comparison_exhibit
+from reviewkit.evidence.constant import constant_exhibits
 from reviewkit.evidence.models import models_exhibit
 from reviewkit.evidence.percents import percent_exhibit
 from reviewkit.evidence.sample import sample_exhibit
@@ -158,7 +159,15 @@ def _exhibits(found: Reestimation, design: Design, made: FittedModel, focus: Foc
         percent_exhibit(*tables, names),
         baseline_exhibit(linear, made.design, place, found.specification.errors, label),
         *_step_account(found, made.design, focus),
+        *_constant(found, made.design, focus),
     )
+
+
+def _constant(found: Reestimation, design: Design, focus: Focus) -> tuple[Exhibit, ...]:
+    """How the coefficient moves with a constant, where least squares added one."""
+    if found.submitted.estimator is not Estimator.OLS:
+        return ()
+    return constant_exhibits(found.specification, design, focus)
 
 
 def _step_account(found: Reestimation, design: Design, focus: Focus) -> tuple[Exhibit, ...]:
