@@ -10,7 +10,7 @@ from reviewkit.arithmetic import PercentReadings, no_percent, percent_readings
 from reviewkit.design_matrix import CONSTANT, Design, DesignColumn, Level, part_columns
 from reviewkit.estimators.covariance import Inference, infer
 from reviewkit.estimators.fit import Fit
-from reviewkit.expressions import Column
+from reviewkit.expressions import Apply, Column, Node
 from reviewkit.refusals import NotEstimable, Refusal
 from reviewkit.specification import (
     ErrorKind,
@@ -133,12 +133,20 @@ def percent_why_not(outcome: Outcome, estimator: Estimator, column: DesignColumn
         return "the constant has no change to read"
     part = column.parts[0]
     if len(column.parts) > 1 or not isinstance(part, Level | Column):
-        logged = len(column.parts) == 1 and str(part).startswith("log(")
+        logged = len(column.parts) == 1 and _is_logged(part)
         return "the covariate is in logs: the coefficient is an elasticity" if logged else "not a covariate by itself"
     own = part_columns(part)[0]
-    others = [each for each in design.columns_of_x if each.name != column.name and _uses(each, own)]
-    siblings = isinstance(part, Level) and all(len(o.parts) == 1 and isinstance(o.parts[0], Level) for o in others)
-    return None if not others or siblings else f"{own} also stands in {others[0].name}"
+    holders = [each for each in design.columns_of_x if each.name != column.name and _uses(each, own)]
+    others = [each.name for each in holders if not (isinstance(part, Level) and _is_class(each))]
+    return f"{own} also stands in {others[0]}" if others else None
+
+
+def _is_logged(part: Node | Level) -> bool:
+    return isinstance(part, Apply) and part.function == "log" and isinstance(part.argument, Column)
+
+
+def _is_class(column: DesignColumn) -> bool:
+    return len(column.parts) == 1 and isinstance(column.parts[0], Level)
 
 
 def _transform_why_not(outcome: Outcome, design: Design) -> str:

@@ -208,3 +208,24 @@ def test_a_printed_factor_without_its_class_is_not_mistaken_for_a_product() -> N
     printed = {"terms": {"factor(region)": {"estimate": "0.1"}}}
     found = refit(two, outcome=LOG_PLUS, model={"terms": ["factor(region)*treated"]}, printed=printed)
     assert [each.term for each in found.agreement] == ["factor(region)[north]"]
+
+
+# --- why there is no percent ----------------------------------------------------------------------------------
+
+
+@pytest.mark.parametrize(
+    ("terms", "term", "why"),
+    [
+        (["factor(region)*treated"], "factor(region)[north]", "region also stands in factor(region)[north]:treated"),
+        (["size", "size^2"], "size", "size also stands in size^2"),
+        (["log(size)"], "log(size)", "the covariate is in logs: the coefficient is an elasticity"),
+        (["log(size)^2"], "log(size)^2", "not a covariate by itself"),
+        (["log(size + 1)"], "log(size + 1)", "not a covariate by itself"),
+        (["factor(region)", "treated"], "factor(region)[north]", None),
+    ],
+)
+def test_why_a_term_has_no_percent_names_what_stands_in_the_way(terms: list[str], term: str, why: str | None) -> None:
+    row = refit(amounts(), outcome=POSITIVE, model={"terms": terms}).submitted.term(term)
+    assert row is not None
+    assert row.readings.percent_why_not == why
+    assert (row.readings.percent is None) == (why is not None)
