@@ -12,7 +12,7 @@ from reviewkit.estimators.separation import separated_rows
 from reviewkit.implied import Focus
 from reviewkit.joint import FITTERS
 from reviewkit.refusals import NotEstimable
-from reviewkit.specification import Estimator, Specification, Zeros
+from reviewkit.specification import Estimator, Specification, Transform, Zeros
 from reviewkit.transforms import transformed
 from reviewkit.wording import counted, joined
 
@@ -38,12 +38,13 @@ class FittedModel:
 
 
 def submission_rows(spec: Specification, design: Design) -> Mask:
-    """The rows that the submission uses: all, or those with an outcome above zero where zeros were dropped.
+    """The rows that the submission uses: all, or where zeros were dropped, those left that have its transform.
 
     A submitted Poisson model also leaves out the rows that it could only fit as certain zeros.
     """
-    dropped = spec.outcome.zeros is Zeros.DROPPED
-    rows = design.y > 0 if dropped else np.ones(design.rows, dtype=bool)
+    rows = np.ones(design.rows, dtype=bool)
+    if spec.outcome.zeros is Zeros.DROPPED:
+        rows = design.y > 0 if spec.outcome.transform in (Transform.LOG, Transform.SQRT) else design.y != 0
     if spec.estimator is Estimator.POISSON:
         rows = rows & ~separated_rows(well_conditioned(design.x).z, design.y)
     return rows

@@ -132,14 +132,3 @@ def mean_pieces(outcome: Outcome) -> tuple[MeanPiece, ...]:
                 MeanPiece(_ones, _zeros, _zeros, np.square, lambda e: 2 * e),
             )
     raise Refusal("outcome.transform", f"`{outcome.transform}` has no implied mean in this version")
-
-
-def level_factor(outcome: Outcome, exposure: Array | None) -> Array | None:
-    """What turns the mean of the transformed amount into the mean of y, row by row; None for 1.
-
-    Raises:
-        Refusal: Division after the constant with a constant: the mean of y is then not a product.
-    """
-    if outcome.per_exposure is PerExposure.NO or exposure is None:
-        return None
-    return exposure

@@ -229,3 +229,13 @@ def test_why_a_term_has_no_percent_names_what_stands_in_the_way(terms: list[str]
     assert row is not None
     assert row.readings.percent_why_not == why
     assert (row.readings.percent is None) == (why is not None)
+
+
+@pytest.mark.parametrize(("transform", "kept"), [("asinh", 350), ("none", 350), ("log", 250)])
+def test_dropping_zeros_keeps_negative_outcomes_where_the_transform_has_them(transform: str, kept: int) -> None:
+    y = np.random.default_rng(1).lognormal(size=400)
+    y[:50] = 0
+    y[50:150] *= -1
+    data = table(y=y, treated=np.arange(400.0) % 2)
+    outcome = {"column": "y", "transform": transform, "zeros": "dropped"}
+    assert refit(data, outcome=outcome, model={"terms": ["treated"]}).submitted.observations == kept
