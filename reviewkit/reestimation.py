@@ -11,6 +11,7 @@ from reviewkit.design_matrix import Design, build_design
 from reviewkit.evidence.baseline import baseline_exhibit
 from reviewkit.evidence.comparison import comparison_exhibit
 from reviewkit.evidence.constant import constant_exhibits
+from reviewkit.evidence.mean_form import mean_form_exhibit
 from reviewkit.evidence.models import models_exhibit
 from reviewkit.evidence.percents import percent_exhibit
 from reviewkit.evidence.sample import sample_exhibit
@@ -158,6 +159,12 @@ def _exhibits(found: Reestimation, design: Design, made: FittedModel, focus: Foc
         comparison_exhibit(found.comparison, LEVEL),
         percent_exhibit(*tables, names),
         baseline_exhibit(linear, made.design, place, found.specification.errors, label),
+        mean_form_exhibit(
+            found.name,
+            found.submitted.fit,
+            found.alternative.fit if found.alternative else None,
+            found.submitted.outcome,
+        ),
         *_step_account(found, made.design, focus),
         *_constant(found, made.design, focus),
     )

@@ -45,6 +45,7 @@ def test_every_transform_and_kind_of_error_is_valid(transform: str, errors: dict
         "comparison",
         "percent-readings",
         "baseline-diagnostics",
+        "mean-form",
         *(["step-account"] if transform in ("log", "log_plus", "asinh") else []),
         *(["constant-curve", "local-slope"] if transform in ("log_plus", "asinh") else []),
     ]
