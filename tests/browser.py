@@ -37,7 +37,7 @@ class Page:
         for domain in ("Page", "Network", "Log", "Runtime"):
             self._call(f"{domain}.enable")
 
-    def open(self, path, width, height=900, is_dark=False, zoom=1, media="screen"):
+    def open(self, path, width, height=900, is_dark=False, zoom=1, media=""):
         """Show a file at that width; a zoom of 2 leaves the page half as many of its own pixels."""
         scheme = {"name": "prefers-color-scheme", "value": "dark" if is_dark else "light"}
         self._call("Emulation.setEmulatedMedia", media=media, features=[scheme])
@@ -66,6 +66,7 @@ class Page:
 
     def printed(self, path):
         """The page printed to a PDF."""
+        self._call("Emulation.setEmulatedMedia", media="print")
         made = self._call("Page.printToPDF", printBackground=False, preferCSSPageSize=True)
         Path(path).write_bytes(base64.b64decode(made["data"]))
 
