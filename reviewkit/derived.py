@@ -8,7 +8,7 @@ from statistics import NormalDist
 from reviewkit.clauses import Lookup
 from reviewkit.facts import NOT_STATED, Fact, Facts, NotStated, Source, SourceKind, Standing, Value
 from reviewkit.printed import Printed
-from reviewkit.wording import interval, sign, size_percent
+from reviewkit.wording import change, interval, sign, size_percent
 
 _LARGEST_EXPONENT = 700.0
 _WITH_ZEROS = ("dropped", "replaced by a small value", "own part of a two-part model")
@@ -112,11 +112,25 @@ def _percent_end(lookup: Lookup, probability: float) -> float | None:
 
 def percent_interval(lookup: Lookup) -> Value | None:
     """That interval with the direction left to the sentence, where both ends have one."""
-    low, high = _percent_end(lookup, 0.025), _percent_end(lookup, 0.975)
-    if low is None or high is None:
+    return _interval_of_change(_percent_end(lookup, 0.025), _percent_end(lookup, 0.975))
+
+
+def alternative_percent_interval(lookup: Lookup) -> Value | None:
+    """The alternative's interval in percent, likewise."""
+    return _interval_of_change(*(lookup(f"refit.alternative_percent_{end}") for end in ("low", "high")))
+
+
+def _interval_of_change(low: Value | None, high: Value | None) -> str | None:
+    if not isinstance(low, float) or not isinstance(high, float):
         return None
-    ends = sorted((abs(low), abs(high))) if low * high > 0 else (low, high)
-    return interval(*ends, "%")
+    return interval(-high, -low, "%") if low < high < 0 else interval(low, high, "%")
+
+
+def percent_in_words(lookup: Lookup) -> Value | None:
+    """The stated percent with its direction, which the coefficient tells where the text prints a fall without sign."""
+    b, percent = _printed(lookup("claim.coefficient")), _printed(lookup("claim.percent"))
+    falls = b is not None and percent is not None and b.value < 0 < percent.value
+    return None if percent is None else f"a fall of {size_percent(percent)}" if falls else change(percent)
 
 
 def percent_reading(lookup: Lookup) -> Value | None:
@@ -147,7 +161,7 @@ def relative_in_words(lookup: Lookup) -> Value | None:
     words += ", compared in logs" if lookup("refit.scale") == "log_ratio_of_means" else ""
     ends = [lookup(f"refit.relative_{end}") for end in ("smallest", "largest")]
     low, high = (end if isinstance(end, float) else None for end in ends)
-    return words if low is None or high is None else f"{words} (95 % interval {interval(low, high, '%')})"
+    return words if low is None or high is None else f"{words}, with a 95 % interval of {interval(low, high, '%')}"
 
 
 def direction_holds(lookup: Lookup) -> Value | None:
@@ -196,6 +210,7 @@ _RELATIVE = (
     *("refit.relative_percent", "refit.relative_smallest", "refit.relative_largest"),
     *("refit.scale", "refit.sign_turns", "refit.difference_excludes_zero"),
 )
+_ALTERNATIVE_ENDS = ("refit.alternative_percent_low", "refit.alternative_percent_high")
 _BOTH = ("refit.submitted", "refit.alternative")
 _INSIDE = (
     "claim.percent",
@@ -212,6 +227,7 @@ DERIVATIONS = (
     Derivation("claim.percent_low", "claim", _PERCENT_ENDS, percent_low),
     Derivation("claim.percent_high", "claim", _PERCENT_ENDS, percent_high),
     Derivation("claim.percent_interval", "claim", _PERCENT_ENDS, percent_interval),
+    Derivation("claim.percent_in_words", "claim", _PERCENT, percent_in_words),
     Derivation("claim.percent_reading", "claim", _PERCENT, percent_reading),
     Derivation("claim.target_in_words", "claim", ("claim.target",), target_in_words),
     Derivation("claim.inside_alternative", "claim", _INSIDE, inside_alternative),
@@ -220,6 +236,7 @@ DERIVATIONS = (
     Derivation("refit.scale_in_words", "model", ("refit.scale",), scale_in_words),
     Derivation("refit.as_printed", "model", ("refit.reproduced",), as_printed),
     Derivation("refit.relative_in_words", "model", _RELATIVE, relative_in_words),
+    Derivation("refit.alternative_percent_interval", "model", _ALTERNATIVE_ENDS, alternative_percent_interval),
     Derivation("refit.direction_holds", "model", _BOTH, direction_holds),
     Derivation("refit.signs_differ", "model", _BOTH, signs_differ),
     Derivation("refit.no_difference_found", "model", ("refit.difference_excludes_zero",), no_difference_found),

@@ -1,5 +1,6 @@
 """An exhibit as blocks of a note: its table in finished texts, its figures with alternative texts."""
 
+import string
 from collections.abc import Mapping, Sequence
 from dataclasses import replace
 from typing import assert_never
@@ -30,7 +31,10 @@ _MOST_COLUMNS = 8  # beyond, rows and columns change places
 
 def exhibit_blocks(exhibit: Exhibit, place: int) -> tuple[Table | Figure, ...]:
     """The blocks of the exhibit that is number `place` of its note."""
-    figures = tuple(_figure(figure, exhibit, place) for figure in exhibit.figures)
+    parts = string.ascii_lowercase if exhibit.rows or len(exhibit.figures) > 1 else [""]
+    figures = tuple(
+        _figure(figure, exhibit, f"{place}{part}") for part, figure in zip(parts, exhibit.figures, strict=False)
+    )
     if not exhibit.rows:
         return figures
     if figures and len(exhibit.rows) > _MOST_ROWS:
@@ -40,9 +44,11 @@ def exhibit_blocks(exhibit: Exhibit, place: int) -> tuple[Table | Figure, ...]:
 
 
 def exhibit_table(exhibit: Exhibit, prefix: str = "") -> Table:
-    """The exhibit's table with every cell as text; `prefix` goes before the caption."""
-    rows = tuple(_row(exhibit.columns, row) for row in exhibit.rows)
-    columns = tuple(_heading(name) for name in exhibit.columns)
+    """The exhibit's table with every cell as text, columns without any left out; `prefix` goes before the caption."""
+    shown = tuple(_row(exhibit.columns, row) for row in exhibit.rows)
+    filled = [at for at in range(len(exhibit.columns)) if any(row[at] != NO_VALUE for row in shown)]
+    rows = tuple(tuple(row[at] for at in filled) for row in shown)
+    columns = tuple(_heading(exhibit.columns[at]) for at in filled)
     if len(columns) > _MOST_COLUMNS >= len(rows):
         columns, rows = _turned(columns, rows)
     return Table(sentence(prefix + clean(exhibit.title)), columns, rows, _ended(exhibit.sentence))
@@ -124,9 +130,27 @@ def _heading(column: str) -> str:
 # --- figures in words -------------------------------------------------------------------------------------------
 
 
-def _figure(figure: FigureData, exhibit: Exhibit, place: int) -> Figure:
-    shown = f"{figure.y_label} against {figure.x_label}" if isinstance(figure, BinnedFigure) else exhibit.title
-    return Figure(_ended(f"Exhibit {place}, drawn: {clean(shown)}"), alt_text(figure, exhibit.title), figure)
+def _figure(figure: FigureData, exhibit: Exhibit, number_shown: str) -> Figure:
+    shown = _sentence_case(clean(_drawn(figure, exhibit.title)))
+    return Figure(_ended(f"Exhibit {number_shown}. {shown}"), alt_text(figure, exhibit.title), figure)
+
+
+def _drawn(figure: FigureData, title: str) -> str:
+    match figure:
+        case BinnedFigure():
+            return f"{figure.y_label} against {figure.x_label}"
+        case BarFigure():
+            return f"{figure.y_label} by {figure.x_label}"
+        case IntervalFigure():
+            return title
+        case _:
+            assert_never(figure)
+
+
+def _sentence_case(words: str) -> str:
+    """A capital first letter, unless the words begin with the name of a column."""
+    first = words.split(" ", 1)[0]
+    return words if "_" in first or not first.isalpha() else words[:1].upper() + words[1:]
 
 
 def _intervals_in_words(figure: IntervalFigure) -> str:

@@ -281,9 +281,9 @@ def _is_below(bound: float, values: list[float]) -> bool:
 
 def _without_apparatus(text: str, case: CaseContent) -> str:
     """The text without numbers of points and exhibits, each checked to be one that exists."""
-    for found in re.finditer(r"[Ee]xhibits? ((?:\d+(?:, | and )?)+)", text):
+    for found in re.finditer(r"[Ee]xhibits? ((?:\d+(?:, | and | to )?)+)", text):
         assert all(1 <= int(one) <= len(case.exhibits) for one in re.findall(r"\d+", found[1])), found[0]
-    without_exhibits = re.sub(r"([Ee]xhibits?) (?:\d+(?:, | and )?)+", r"\1 ", text)
+    without_exhibits = re.sub(r"([Ee]xhibits?) (?:\d+(?:, | and | to )?)+", r"\1 ", text)
     return re.sub(r"\b([1-5])\. (?=[A-Z][^.]*\((?:major|minor)\))", "", without_exhibits)
 
 

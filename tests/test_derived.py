@@ -181,7 +181,7 @@ def test_the_interval_of_a_percent_comes_from_the_printed_error():
 def test_a_difference_is_told_by_size_direction_and_interval():
     given = {"refit__relative_percent": -70.0, "refit__relative_smallest": 52.0, "refit__relative_largest": 94.0}
     given |= {"refit__scale": "log_ratio_of_means", "refit__difference_excludes_zero": "yes", "refit__sign_turns": "no"}
-    words = "about 70 % smaller than the first, compared in logs (95 % interval 52 to 94 %)"
+    words = "about 70 % smaller than the first, compared in logs, with a 95 % interval of 52 to 94 %"
     assert derived("refit.relative_in_words", **given) == words
     assert "larger" in derived("refit.relative_in_words", **{**given, "refit__relative_percent": 70.0})
     without = {**given, "refit__relative_smallest": NOT_STATED}
@@ -189,6 +189,22 @@ def test_a_difference_is_told_by_size_direction_and_interval():
     for other in ({"refit__sign_turns": "yes"}, {"refit__relative_percent": -130.0}):
         assert derived("refit.relative_in_words", **{**given, **other}) is None
     assert derived("refit.relative_in_words", **{**given, "refit__difference_excludes_zero": "no"}) is None
+
+
+@pytest.mark.parametrize(
+    ("coefficient", "percent", "words"),
+    [("0.5", "51", "a rise of 51 %"), ("-0.34", "34", "a fall of 34 %"), ("-0.34", "-34", "a fall of 34 %")],
+)
+def test_a_stated_percent_has_a_direction(coefficient, percent, words):
+    assert derived("claim.percent_in_words", claim__coefficient=P(coefficient), claim__percent=P(percent)) == words
+
+
+def test_the_alternatives_interval_leaves_the_direction_of_a_fall_to_the_sentence():
+    def told(low, high):
+        given = {"refit__alternative_percent_low": low, "refit__alternative_percent_high": high}
+        return derived("refit.alternative_percent_interval", **given)
+
+    assert (told(3.0, 33.0), told(-33.0, -3.0), told(-33.0, 3.0)) == ("3 to 33 %", "3 to 33 %", "-33 to 3 %")
 
 
 def test_signs_of_both_estimates_are_told_as_one_sentence():

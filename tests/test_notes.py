@@ -30,10 +30,10 @@ from hypothesis import strategies as st
 from reviewkit.compose import CaseContent, NoteWishes, Voice, compose, wishes_from
 from reviewkit.compose.length import words_in
 from reviewkit.compose.phrases import phrases_for
-from reviewkit.compose.points import points
+from reviewkit.compose.points import listed, points
 from reviewkit.decisions import decide
 from reviewkit.facts import STUDY, Facts
-from reviewkit.note import Audience, Figure, Note, Paragraph, Points, Section, Table
+from reviewkit.note import Audience, Figure, Note, Paragraph, Section, Table
 from reviewkit.refusals import Refusal
 from reviewkit.rules import Finding, Importance, State
 from reviewkit.writers.text import text_of
@@ -128,9 +128,58 @@ def test_a_note_on_everything_still_keeps_to_its_words_and_tells_at_most_five_po
     assert words_in(note) <= 900
     assert sum(each.level == 2 for each in note.sections) <= 5
     told = sum(each.level == 2 for each in note.sections)
-    smaller = section(note, "Smaller points").blocks[0]
-    assert isinstance(smaller, Points)
-    assert told + len(smaller.items) == len(BOOK.rules)
+    further = section(note, "Further requests").blocks  # there are majors among them
+    numbers = [block.lead for block in further if isinstance(block, Paragraph)]
+    assert numbers == [f"{at}." for at in range(told + 1, told + 1 + len(further))]
+    assert told + len(further) == len(listed(points(all_raised()), phrases_for(Voice.WE)))
+
+
+def test_a_major_point_stands_in_full_where_words_allow_and_never_under_smaller_points():
+    for case in (case_with(), all_raised()):
+        note = compose(case, Audience.AUTHORS)
+        smaller = [block for each in note.sections if each.title == "Smaller points" for block in each.blocks]
+        assert not any("(major)" in block.text for block in smaller if isinstance(block, Paragraph))
+        full = [each for each in note.sections if each.level == 2]
+        assert full
+        assert all("(major)" in each.title for each in full)
+
+
+def test_points_are_numbered_on_through_the_note():
+    note = compose(case_with(wishes=NoteWishes(own_points=("what is a season",))), Audience.AUTHORS)
+    numbers = [each.title.partition(".")[0] for each in note.sections if each.level == 2]
+    for each in note.sections:
+        numbers += [
+            block.lead[:-1] for block in each.blocks if isinstance(block, Paragraph) and block.lead[:1].isdigit()
+        ]
+    assert numbers == [str(at) for at in range(1, len(numbers) + 1)]
+    assert len(numbers) > 3
+
+
+def test_what_another_point_covers_is_not_told_again():
+    one_constant = (settled("constants.varied", "no"),)
+    told = {point.rule.name for point in points(case_with(more=one_constant))}
+    raised = {each.rule.name for each in case_with(more=one_constant).findings if each.state is State.RAISED}
+    assert "percent-of-a-shifted-log" in told
+    assert "constant-added" in raised - told
+    wishes = NoteWishes(dropped={"percent-of-a-shifted-log": "another referee asks for it"})
+    uncovered = case_with(wishes=wishes, more=one_constant)
+    assert "constant-added" in {point.rule.name for point in points(uncovered)}
+
+
+def test_a_point_about_another_model_covers_nothing():
+    case = case_with(more=(settled("constants.varied", "no"),))
+    covering = next(each for each in case.findings if each.rule.name == "percent-of-a-shifted-log")
+    elsewhere = replace(covering, subject="claim:elsewhere")
+    moved = tuple(elsewhere if each is covering else each for each in case.findings)
+    assert "constant-added" in {point.rule.name for point in points(replace(case, findings=moved))}
+
+
+def test_what_could_not_be_found_is_asked_in_one_line():
+    names = ("data-or-code-not-available", "software-not-stated")
+    found = tuple(Finding(BOOK.rule(name), STUDY, State.RAISED, Importance.MINOR) for name in names)
+    case = case_with(has_data=False)
+    text = authors(replace(case, findings=(*case.findings, *found)))
+    assert "We could not find where data and scripts can be reached or the software with its version (minor)." in text
 
 
 def test_major_points_come_before_minor_ones_and_those_with_evidence_first():
@@ -150,15 +199,17 @@ def test_the_order_of_findings_does_not_change_the_note():
 
 def test_the_case_for_the_authors_stands_before_the_numbers_against_it():
     note = compose(case_with(), Audience.AUTHORS)
-    told = next(each for each in note.sections if "both estimates side by side" in each.title)
+    told = next(each for each in note.sections if "which average is meant" in each.title)
     leads = [block.lead for block in told.blocks if isinstance(block, Paragraph)]
     assert leads.index("In favour of this choice.") < leads.index("From the numbers.")
 
 
 def test_a_point_names_its_exhibits_and_exhibits_follow_the_text():
     note = compose(case_with(), Audience.AUTHORS)
-    assert note.sections[-1].title == "Exhibits"
-    blocks = note.sections[-1].blocks
+    assert [each.title for each in note.sections[-2:]] == ["Exhibits", "Computing the numbers again"]
+    blocks = section(note, "Exhibits").blocks
+    assert isinstance(blocks[0], Paragraph)
+    assert "Exhibit 4 belongs to no single request" in blocks[0].text
     assert [block.caption[:9] for block in blocks if isinstance(block, Table)] == [f"Exhibit {at}" for at in (1, 2, 3)]
     assert all(block.alt for block in blocks if isinstance(block, Figure))
     assert "(exhibits 2 and 3)" in authors(case_with())
@@ -250,8 +301,9 @@ def test_the_editor_learns_headline_reproduction_alternative_direction_and_concl
         "could reproduce",
         "0.41 (0.09)",
         "20 % (95 % interval 4 to 37 %)",
-        "same sign",
-        "one revision",
+        "The direction is the same in both.",
+        "depends on this choice",
+        "2 major and 1 minor requests",
     ):
         assert words in text
 

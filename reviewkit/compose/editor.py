@@ -5,12 +5,14 @@ from reviewkit.clauses import Lookup
 from reviewkit.compose.content import CaseContent
 from reviewkit.compose.length import words_in
 from reviewkit.compose.phrases import Phrases
-from reviewkit.compose.points import points
+from reviewkit.compose.points import listed, missing_labels, points
 from reviewkit.facts import Value
 from reviewkit.note import Audience, Note, Paragraph, Section
 from reviewkit.printed import Printed
-from reviewkit.rules import State
-from reviewkit.wording import clean, estimate, fixed, interval, percent, share, text
+from reviewkit.rules import Importance
+from reviewkit.wording import change, clean, estimate, fixed, interval, joined, percent, share, text
+
+_MOST_OPEN = 2
 
 
 def editor_note(case: CaseContent, phrases: Phrases) -> Note:
@@ -21,7 +23,7 @@ def editor_note(case: CaseContent, phrases: Phrases) -> Note:
     software = phrases.say("editor.software" if case.repeats else "editor.software_only", version=__version__)
     title = phrases.say("titles.editor", title=clean(case.title))
     for brief in (False, True):
-        parts = [_claim(case, model, phrases), *_numbers(lookup, phrases, brief), *_what_follows(case, phrases)]
+        parts = [_claim(case, model, phrases, brief), *_numbers(lookup, phrases, brief), *_what_follows(case, phrases)]
         blocks = tuple(Paragraph(words) for words in (" ".join(filter(None, parts)), own, software) if words)
         note = Note(title, Audience.EDITOR, (Section("", blocks),))
         if words_in(note) <= phrases.limit("editor_words"):
@@ -36,7 +38,7 @@ def _model(case: CaseContent) -> str:
     return (fitted or list(models))[0]
 
 
-def _claim(case: CaseContent, model: str, phrases: Phrases) -> str:
+def _claim(case: CaseContent, model: str, phrases: Phrases, brief: bool) -> str:
     lookup = case.book.lookup(case.facts, model)
     estimator, transform = _words(lookup("estimator")), _words(lookup("outcome.transform"))
     if not estimator or not transform:
@@ -45,13 +47,28 @@ def _claim(case: CaseContent, model: str, phrases: Phrases) -> str:
     has_zeros = isinstance(zero_share, float) and zero_share > 0
     zeros = phrases.say("editor.zeros", share=share(zero_share)) if has_zeros else ""
     common = {"estimator": estimator, "transform": transform, "zeros": zeros}
-    claimed = [case.facts.known("claim.percent", claim) for claim in case.facts.subjects("claim")]
-    read = [fact.value for fact in claimed if fact is not None and isinstance(fact.value, Printed | float)]
-    return (
-        phrases.say("editor.claim", percent=percent(read[0]), **common)
-        if read
-        else phrases.say("editor.no_claim", **common)
-    )
+    claims = case.facts.subjects("claim")
+    read = [claim for claim in claims if isinstance(_value(case, "claim.percent", claim), Printed | float)]
+    if not read:
+        return phrases.say("editor.no_claim", **common)
+    stated = _words(_value(case, "claim.percent_in_words", read[0])) or change(_value(case, "claim.percent", read[0]))
+    reading = "" if brief else _reading(case.book.lookup(case.facts, read[0]), phrases)
+    return phrases.say("editor.claim", percent=stated, reading=reading, **common)
+
+
+def _reading(lookup: Lookup, phrases: Phrases) -> str:
+    """What the stated percent is, with the ratio that the coefficient stands for where a log gives it one."""
+    reading, exact = _words(lookup("claim.percent_reading")), lookup("claim.percent_exact")
+    if not reading:
+        return ""
+    has_ratio = lookup("outcome.transform") == "log" and isinstance(exact, float)
+    ratio = phrases.say("editor.ratio", percent=change(exact)) if has_ratio else ""
+    return phrases.say("editor.reading", reading=reading, ratio=ratio)
+
+
+def _value(case: CaseContent, name: str, subject: str) -> Value | None:
+    fact = case.facts.known(name, subject)
+    return None if fact is None else fact.value
 
 
 def _numbers(lookup: Lookup, phrases: Phrases, brief: bool) -> list[str]:
@@ -60,7 +77,6 @@ def _numbers(lookup: Lookup, phrases: Phrases, brief: bool) -> list[str]:
     return [
         _reproduced(lookup, phrases),
         _alternative(lookup, phrases, brief),
-        _direction(lookup, phrases),
         _conclusion(lookup, phrases),
     ]
 
@@ -78,54 +94,54 @@ def _reproduced(lookup: Lookup, phrases: Phrases) -> str:
 def _alternative(lookup: Lookup, phrases: Phrases, brief: bool) -> str:
     """What the model of the mean gives, in percent where that has a meaning, else on the comparison's scale."""
     in_percent = isinstance(lookup("refit.alternative_percent"), float)
-    ending, unit = ("_percent", "%") if in_percent else ("", "")
+    ending = "_percent" if in_percent else ""
     value = lookup(f"refit.alternative{ending}")
     if not isinstance(value, float):
         return ""
     scale = _words(lookup("refit.scale"))
     named = phrases.say(f"scales.{scale}") if phrases.has(f"scales.{scale}") else scale
-    shown = percent(value) if in_percent else f"{estimate(value)} ({named})"
+    shown = change(value) if in_percent else f"{estimate(value)} ({named})"
     low, high = (lookup(f"refit.alternative{ending}_{end}") for end in ("low", "high"))
     if isinstance(low, float) and isinstance(high, float):
-        shown = phrases.say("editor.with_interval", value=shown, level=_level(), interval=interval(low, high, unit))
+        ends = _words(lookup("refit.alternative_percent_interval")) if in_percent else interval(low, high)
+        shown = phrases.say("editor.with_interval", value=shown, level=_level(), interval=ends)
     other = lookup(f"refit.submitted{ending}")
-    own = percent(other) if in_percent else estimate(other)
+    own = change(other) if in_percent else estimate(other)
     submitted = phrases.say("editor.submitted", value=own) if isinstance(other, float) and not brief else ""
     return phrases.say("editor.alternative", alternative=shown, submitted=submitted)
 
 
-def _direction(lookup: Lookup, phrases: Phrases) -> str:
-    match lookup("refit.sign_turns"):
-        case "yes":
-            return phrases.say("editor.sign_turns")
-        case "no":
-            return phrases.say("editor.same_sign")
-        case _:
-            return ""
-
-
 def _conclusion(lookup: Lookup, phrases: Phrases) -> str:
-    conclusion, bound = lookup("refit.conclusion"), lookup("refit.agree_within_percent")
+    """Whether direction and size hold in both models, with the bound where they agree."""
+    conclusion, turns = lookup("refit.conclusion"), lookup("refit.sign_turns")
+    direction = phrases.say(f"editor.sign_{turns}") if turns in ("yes", "no") else ""
     if conclusion == "unsettled":
         apart = lookup("refit.difference_excludes_zero") == "yes"
         conclusion = "unsettled" if apart else "unsettled_zero"
-    if conclusion in ("agrees", "unsettled_zero") and not isinstance(bound, float):
-        return ""
-    why = _words(lookup("refit.why_no_conclusion"))
-    if conclusion == "none" and not why:
-        return ""
-    from reviewkit.comparison import MATERIAL_SHARE
-
-    material = fixed(100 * MATERIAL_SHARE, 0)
-    return phrases.say(f"editor.{conclusion}", bound=percent(bound), why=why.rstrip("."), material=material)
+    bound, why = lookup("refit.agree_within_percent"), _words(lookup("refit.why_no_conclusion"))
+    is_empty = conclusion in ("agrees", "unsettled_zero") and not isinstance(bound, float)
+    if is_empty or (conclusion == "none" and not why):
+        return direction
+    size = phrases.say(f"editor.{conclusion}", bound=percent(bound), why=why.rstrip("."))
+    return f"{direction} {size}".strip()
 
 
 def _what_follows(case: CaseContent, phrases: Phrases) -> list[str]:
-    raised = bool(points(case))
-    is_open = any(finding.state is State.OPEN for finding in case.findings)
-    if raised:
-        return [phrases.say("editor.settle"), *([phrases.say("editor.some_open")] if is_open else [])]
-    return [phrases.say("editor.nothing_open" if is_open else "editor.nothing")]
+    """How many requests there are, and what is open."""
+    found = points(case)
+    open_labels = missing_labels(case)
+    has_more = len(open_labels) > _MOST_OPEN
+    opened = ", ".join(open_labels[:_MOST_OPEN]) if has_more else joined(open_labels)
+    more = phrases.say("editor.more_open") if has_more else ""
+    still_open = [phrases.say("editor.some_open", labels=opened, more=more)] if open_labels else []
+    if not found:
+        return [phrases.say("editor.nothing_open" if open_labels else "editor.nothing"), *still_open]
+    majors = sum(point.finding.importance is Importance.MAJOR for point in found)
+    minors = len(listed(found, phrases)) - majors
+    counts = [(majors, "major"), (minors, "minor")]
+    told = joined(f"{number} {importance}" for number, importance in counts if number)
+    noun = "request" if majors + minors == 1 else "requests"
+    return [phrases.say("editor.settle", requests=f"{told} {noun}"), *still_open]
 
 
 def _level() -> str:

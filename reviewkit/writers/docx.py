@@ -9,7 +9,7 @@ from reviewkit.note import Block, Excerpt, Figure, Note, Paragraph, Points, Refe
 from reviewkit.safekeeping import write_atomically
 from reviewkit.wording import clean
 from reviewkit.writers.docx_styles import Looks, looks, prepare
-from reviewkit.writers.pictures import FULL_CM, draw
+from reviewkit.writers.pictures import PAGE_CM, draw
 from reviewkit.writers.table_widths import column_widths
 from reviewkit.writers.typesetting import is_numeric, typeset
 
@@ -20,6 +20,8 @@ if TYPE_CHECKING:
     from docx.text.paragraph import Paragraph as DocxParagraph
 
 _EPOCH = (1980, 1, 1, 0, 0, 0)
+_PADDING_TWIPS = 85  # left and right of a cell's text: 1.5 mm
+_PADDING_CM = _PADDING_TWIPS / 567
 _CM_A_CHARACTER = 0.2  # of the table's text, on average with its padding
 
 
@@ -72,19 +74,21 @@ def _add(document: "Document", block: Block, style: Looks) -> None:
 def _add_excerpt(document: "Document", block: Excerpt) -> None:
     lead = document.add_paragraph(typeset(f"{block.place}:"), style="Body Text")
     lead.paragraph_format.keep_with_next = True
-    for line in block.text.strip().splitlines():
-        document.add_paragraph(clean(line), style="Excerpt")
+    lines = block.text.strip().splitlines()
+    for at, line in enumerate(lines, 1):
+        paragraph = document.add_paragraph(clean(line), style="Excerpt")
+        paragraph.paragraph_format.keep_with_next = None if at == len(lines) else True
 
 
 def _add_figure(document: "Document", block: Figure) -> None:
-    """The picture with its alternative text, the caption below it."""
+    """The picture with its alternative text, the caption above it as with tables."""
     from docx.shared import Cm
 
+    caption = document.add_paragraph(typeset(block.caption), style="Caption")
+    caption.paragraph_format.keep_with_next = True
     paragraph = document.add_paragraph(style="Body Text")
-    paragraph.paragraph_format.keep_with_next = True
-    picture = paragraph.add_run().add_picture(io.BytesIO(draw(block.data, FULL_CM)), width=Cm(FULL_CM))
+    picture = paragraph.add_run().add_picture(io.BytesIO(draw(block.data, PAGE_CM)), width=Cm(PAGE_CM))
     picture._inline.docPr.set("descr", clean(block.alt))
-    document.add_paragraph(typeset(block.caption), style="Caption")
 
 
 # --- tables -----------------------------------------------------------------------------------------------------
@@ -95,6 +99,7 @@ def _add_table(document: "Document", block: Table, style: Looks) -> None:
     caption.paragraph_format.keep_with_next = True
     table = document.add_table(rows=1 + len(block.rows), cols=len(block.columns))
     table.autofit = False
+    _align_with_text(table)
     right = [is_numeric(row[at] for row in block.rows) for at in range(len(block.columns))]
     for at, texts in enumerate((block.columns, *block.rows)):
         for cell, text, is_right in zip(table.rows[at].cells, texts, right, strict=True):
@@ -121,10 +126,30 @@ def _share_widths(table: "DocxTable", block: Table, width_cm: float) -> None:
     from docx.shared import Cm
 
     needs = column_widths((block.columns, *block.rows), int(width_cm / _CM_A_CHARACTER), padding=3)
-    unit = min(width_cm / sum(needs), _CM_A_CHARACTER)
+    unit = min((width_cm - 2 * _PADDING_CM) / sum(needs), _CM_A_CHARACTER)
     for column, need in zip(table.columns, needs, strict=True):
         for cell in (column, *column.cells):
             cell.width = Cm(need * unit)
+
+
+def _align_with_text(table: "DocxTable") -> None:
+    """The table's rules begin where the text does: a table stands out by the padding of its cells otherwise."""
+    from docx.oxml import OxmlElement
+    from docx.oxml.ns import qn
+
+    properties = table._tbl.tblPr
+    padding = OxmlElement("w:tblCellMar")
+    for side in ("left", "right"):
+        each = OxmlElement(f"w:{side}")
+        each.set(qn("w:w"), str(_PADDING_TWIPS))
+        each.set(qn("w:type"), "dxa")
+        padding.append(each)
+    indent = OxmlElement("w:tblInd")
+    indent.set(qn("w:w"), str(_PADDING_TWIPS))
+    indent.set(qn("w:type"), "dxa")
+    layout = properties.find(qn("w:tblLayout"))
+    layout.addprevious(indent)
+    layout.addnext(padding)
 
 
 def _rule(table: "DocxTable", style: Looks) -> None:
@@ -145,7 +170,7 @@ def _rule(table: "DocxTable", style: Looks) -> None:
     borders = _border(table._tbl.tblPr, "w:tblBorders", rules)
     layout = table._tbl.tblPr.find(qn("w:tblLayout"))
     if layout is not None:
-        layout.addprevious(borders)  # the schema wants borders before the layout
+        layout.addprevious(borders)  # the schema wants borders between indent and layout
 
 
 def _border(parent: "object", name: str, sides: dict[str, tuple[int, str]]) -> "object":

@@ -19,8 +19,8 @@ from reviewkit.writers.pictures import COLUMN_CM, FULL_CM, draw
 from reviewkit.writers.typesetting import is_numeric, typeset
 
 _PLACEHOLDER = re.compile(r"\{(language|title|style|style_hash|contents|sections)\}")
-_EXHIBIT_CAPTION = re.compile(r"Exhibit (\d+)\b")
-_EXHIBIT_MENTION = re.compile(r"\b[Ee]xhibits? \d+(?:(?:, | and )\d+)*\b")
+_EXHIBIT_CAPTION = re.compile(r"Exhibit (\d+)[a-z]?\b")
+_EXHIBIT_MENTION = re.compile(r"\b[Ee]xhibits?\s\d+(?:(?:,\s|\sand\s)\d+)*\b")
 _LOWEST_HEADING = 6
 _PIXELS_A_DOT = 96 / 300  # pictures have 300 dots an inch, a page 96 pixels
 
@@ -165,7 +165,7 @@ def _block(block: Block, anchor: str, anchors: Anchors) -> str:
         case Table():
             return _table(block, anchor)
         case Figure():
-            return f"<figure>\n{_picture(block)}\n<figcaption>{_escaped(block.caption)}</figcaption>\n</figure>"
+            return f"<figure>\n<figcaption>{_escaped(block.caption)}</figcaption>\n{_picture(block)}\n</figure>"
         case Excerpt():
             lines = "\n".join(html.escape(clean(line).rstrip()) for line in block.text.strip().splitlines())
             place = f"<figcaption>{_escaped(block.place)}:</figcaption>"

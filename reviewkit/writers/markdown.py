@@ -8,7 +8,8 @@ from typing import assert_never
 from reviewkit.note import Block, Excerpt, Figure, Note, Paragraph, Points, ReferenceList, Table
 from reviewkit.safekeeping import write_atomically
 from reviewkit.wording import clean
-from reviewkit.writers.pictures import FULL_CM, draw
+from reviewkit.writers.pictures import PAGE_CM, draw
+from reviewkit.writers.typesetting import tied
 
 _SPECIAL = re.compile(r"([\\`*_{}\[\]<>#|~$@&])")
 _LINE_START = re.compile(r"^(\d*)([-+=.)])")  # would begin a list or underline a heading
@@ -39,7 +40,7 @@ def escaped(text: str) -> str:
 
 
 def _heading(text: str) -> str:
-    return _LINKED.sub(_unlinked, _SPECIAL.sub(r"\\\1", clean(text).strip()))
+    return _LINKED.sub(_unlinked, _SPECIAL.sub(r"\\\1", tied(text).strip()))
 
 
 def _unlinked(found: re.Match[str]) -> str:
@@ -49,7 +50,7 @@ def _unlinked(found: re.Match[str]) -> str:
 
 def _pictures(note: Note) -> dict[Figure, tuple[str, bytes]]:
     figures = dict.fromkeys(block for section in note.sections for block in section.blocks if isinstance(block, Figure))
-    return {figure: (_picture_name(figure, at), draw(figure.data, FULL_CM)) for at, figure in enumerate(figures, 1)}
+    return {figure: (_picture_name(figure, at), draw(figure.data, PAGE_CM)) for at, figure in enumerate(figures, 1)}
 
 
 def _picture_name(figure: Figure, at: int) -> str:
@@ -66,7 +67,7 @@ def _block(block: Block, names: dict[Figure, str]) -> str:
         case Table():
             return _table(block)
         case Figure():
-            return f"![{escaped(block.alt)}]({names[block]})\n\n*{escaped(block.caption)}*"
+            return f"**{escaped(block.caption)}**\n\n![{escaped(block.alt)}]({names[block]})"
         case Excerpt():
             return f"{escaped(block.place)}:\n\n" + _indented(block.text)
         case ReferenceList():

@@ -12,6 +12,8 @@ COLUMN_CM = 8.5
 """Width of a column of text."""
 FULL_CM = 16.0
 """Width of a page of text."""
+PAGE_CM = 11.5
+"""Width of a figure on a page, so that two and their tables fit on one."""
 
 _CM_IN_INCHES = 2.54
 _DPI = 300
@@ -55,11 +57,11 @@ def draw(figure: FigureData, width_cm: float = COLUMN_CM) -> bytes:
 def _height_cm(figure: FigureData, width_cm: float) -> float:
     match figure:
         case IntervalFigure():
-            return 1.9 + 0.75 * max(len(figure.rows), 1)
+            return 1.7 + 0.6 * max(len(figure.rows), 1)
         case BinnedFigure():
-            return 0.72 * min(width_cm, 11.0)
+            return 0.56 * min(max(width_cm, 9.5), 11.0)
         case BarFigure():
-            return 1.9 + 0.7 * max(len(figure.bars), 1)
+            return 1.6 + 0.52 * max(len(figure.bars), 1)
         case _:
             assert_never(figure)
 

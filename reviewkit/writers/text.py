@@ -1,6 +1,5 @@
 """A note as plain text of at most 78 columns: tables aligned, figures told in words."""
 
-import re
 import textwrap
 import unicodedata
 from collections.abc import Iterator, Sequence
@@ -11,7 +10,7 @@ from reviewkit.note import Block, Excerpt, Figure, Note, Paragraph, Points, Refe
 from reviewkit.safekeeping import write_atomically
 from reviewkit.wording import clean
 from reviewkit.writers.table_widths import column_widths
-from reviewkit.writers.typesetting import is_numeric
+from reviewkit.writers.typesetting import is_numeric, tied
 
 WIDTH = 78
 _GAP = 2
@@ -61,9 +60,8 @@ def _block(block: Block) -> str:
 
 
 def _wrap(words: str, first: str = "", later: str = "") -> list[str]:
-    tied = re.sub(r"(\d) %", "\\1\u00a0%", clean(words))  # a number stays with its per cent sign
     lines = textwrap.wrap(
-        tied, WIDTH, initial_indent=first, subsequent_indent=later, break_on_hyphens=False, break_long_words=True
+        tied(words), WIDTH, initial_indent=first, subsequent_indent=later, break_on_hyphens=False, break_long_words=True
     )
     return [line.replace("\u00a0", " ") for line in lines]
 
