@@ -208,9 +208,10 @@ def test_there_is_one_first_heading_and_no_rank_is_left_out(whole, page):
 def test_ranks_are_whole_whatever_the_levels(levels, untitled):
     sections = (Section("" if at == untitled else f"s{at}", (), level) for at, level in enumerate(levels))
     page = read(Note("T", Audience.EDITOR, tuple(sections)))
-    ranks = [int(each.tag[1]) for each in page.all("h1", "h2", "h3", "h4", "h5", "h6") if each.within("main")]
+    ranks = [int(each.tag[1:]) for each in page.elements if re.fullmatch(r"h\d+", each.tag) and each.within("main")]
     steps = [later - earlier for earlier, later in itertools.pairwise([1, *ranks])]
     assert max(steps) == 1
+    assert max(ranks) <= 6
 
 
 def test_landmarks_are_there_once_and_the_language_is_set(page):
