@@ -146,8 +146,8 @@ def test_a_difference_is_told_in_the_words_that_its_bounds_allow():
         "refit.relative_in_words": "about 4 % larger than the first, with a 95 % interval of 1.0 to 12 %",
     }
     assert render(rule.says, apart.get) == (
-        "Your model and a model of the mean differ: taking the two in this order, the second is about 4 % larger than the "
-        "first, with a 95 % interval of 1.0 to 12 %."
+        "Your model and a model of the mean differ: taking the two in this order, the second is about 4 % larger than "
+        "the first, with a 95 % interval of 1.0 to 12 %."
     )
     nothing = {**bounds, "refit.no_difference_found": "no sign of a difference"}
     assert "no sign of a difference" in render(rule.says, nothing.get)

@@ -119,8 +119,9 @@ def _conclusion(lookup: Lookup, phrases: Phrases) -> str:
         apart = lookup("refit.difference_excludes_zero") == "yes"
         conclusion = "unsettled" if apart else "unsettled_zero"
     bound, why = lookup("refit.agree_within_percent"), _words(lookup("refit.why_no_conclusion"))
-    is_empty = conclusion in ("agrees", "unsettled_zero") and not isinstance(bound, float)
-    if is_empty or (conclusion == "none" and not why):
+    has_no_bound = conclusion in ("agrees", "unsettled_zero") and not isinstance(bound, float)
+    turned = conclusion == "differs" and turns == "yes"
+    if turned or has_no_bound or (conclusion == "none" and not why):
         return direction
     size = phrases.say(f"editor.{conclusion}", bound=percent(bound), why=why.rstrip("."))
     return f"{direction} {size}".strip()

@@ -18,7 +18,7 @@ PRIVATE = ("editor", "remark", "remarks")
 """First or last parts of the names of facts that never reach the authors."""
 
 _MOST_FACTS, _MOST_WORKS = 4, 1
-_MOST_PLACES = 3
+_MOST_PLACES = 2
 _CLAIMED = "claim.percent"
 ABOUT_NUMBERS = "refit"  # the topic of rules whose sentences tell what the data show
 _ABOUT_REPORTING = "reporting"
@@ -229,15 +229,15 @@ def _stated(fact: Fact, case: CaseContent, lookup: Lookup) -> str:
 
 
 def places(facts: Iterable[Fact], phrases: Phrases) -> str:
-    """Where the facts stand, machine readings marked as unconfirmed."""
+    """Where the facts stand: the first places, and every one that a machine read and nobody confirmed."""
     shown: dict[str, bool] = {}
     for fact in facts:
         place = clean(fact.source.place)
         if place and fact.source.kind in (SourceKind.MANUSCRIPT, SourceKind.SCRIPT, SourceKind.ANSWER):
             shown[place] = shown.get(place, True) and (fact.confirmed or fact.standing is Standing.SETTLED)
     mark = phrases.say("point.unconfirmed")
-    told = [place if confirmed else f"{place} ({mark})" for place, confirmed in shown.items()]
-    return "; ".join(told[:_MOST_PLACES])
+    told = [place for place, confirmed in shown.items() if confirmed][:_MOST_PLACES]
+    return "; ".join([*told, *(f"{place} ({mark})" for place, confirmed in shown.items() if not confirmed)])
 
 
 def _from_the_numbers(point: Point, lookup: Lookup, phrases: Phrases) -> str:

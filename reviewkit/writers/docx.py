@@ -20,6 +20,7 @@ if TYPE_CHECKING:
     from docx.text.paragraph import Paragraph as DocxParagraph
 
 _EPOCH = (1980, 1, 1, 0, 0, 0)
+_MOST_WHOLE_ROWS, _EDGE = 14, 4
 _PADDING_TWIPS = 85  # left and right of a cell's text: 1.5 mm
 _PADDING_CM = _PADDING_TWIPS / 567
 _CM_A_CHARACTER = 0.2  # of the table's text, on average with its padding
@@ -103,20 +104,26 @@ def _add_table(document: "Document", block: Table, style: Looks) -> None:
     right = [is_numeric(row[at] for row in block.rows) for at in range(len(block.columns))]
     for at, texts in enumerate((block.columns, *block.rows)):
         for cell, text, is_right in zip(table.rows[at].cells, texts, right, strict=True):
-            _fill(cell, text, is_right, is_last=at == len(block.rows) and not block.note)
+            _fill(cell, text, is_right, _may_end_a_page(at, block))
     _share_widths(table, block, style.text_width)
     _rule(table, style)
     if block.note:
         document.add_paragraph(typeset(block.note), style="Table Note")
 
 
-def _fill(cell: "_Cell", text: str, is_right: bool, is_last: bool) -> None:
+def _may_end_a_page(at: int, block: Table) -> bool:
+    """Short tables stay whole; long ones may break, away from their head, their end and their note."""
+    rows = len(block.rows)
+    return (at == rows and not block.note) or (rows > _MOST_WHOLE_ROWS and _EDGE <= at < rows - _EDGE)
+
+
+def _fill(cell: "_Cell", text: str, is_right: bool, may_end_a_page: bool) -> None:
     from docx.enum.text import WD_ALIGN_PARAGRAPH
 
     paragraph: DocxParagraph = cell.paragraphs[0]
     paragraph.style = "Table Text"
     paragraph.add_run(typeset(text))
-    paragraph.paragraph_format.keep_with_next = None if is_last else True
+    paragraph.paragraph_format.keep_with_next = None if may_end_a_page else True
     if is_right:
         paragraph.alignment = WD_ALIGN_PARAGRAPH.RIGHT
 
