@@ -15,6 +15,8 @@ from reviewkit.joint import VERY_FEW_ROWS, Joint
 MATERIAL_SHARE = 0.05
 """Default material share; common practice, no source."""
 LEVEL = 0.95
+MOST_FAILED = 0.05
+"""Share of resamples that may fail before a conclusion is marked weak; common practice, no source."""
 _WIDEST_SHARE = 10.0  # shares are looked for up to 1,000 %
 _SAME = 1e-9  # relative gap under which two numbers are the same by construction
 _ROUNDING = 1e-6  # of the two errors: a gap and an error of the gap below it are rounding
@@ -152,6 +154,8 @@ def _verdict(joint: Joint, share: float, same: bool, cautions: Cautions) -> tupl
 
 
 def _weakness(joint: Joint) -> str | None:
+    if joint.failed_draws > MOST_FAILED * (joint.failed_draws + len(joint.draws if joint.draws is not None else ())):
+        return f"{joint.failed_draws:,} resamples could not be fitted"
     if joint.method == "bootstrap-t" and joint.effective < VERY_FEW_ROWS:
         return f"about {joint.effective:.0f} rows carry the error"
     return None

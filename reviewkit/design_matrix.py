@@ -19,6 +19,7 @@ Array = npt.NDArray[np.float64]
 Mask = npt.NDArray[np.bool_]
 
 CONSTANT = "(constant)"
+_EXACT = 2**53  # whole numbers up to here are told apart as floats
 LARGEST = 1e100
 """Size of a value beyond which its square could no longer be held."""
 MOST_LEVELS = 1000
@@ -234,12 +235,14 @@ def _used_columns(spec: Specification, frame: "pandas.DataFrame") -> dict[str, n
 
 
 def _column(frame: "pandas.DataFrame", name: str) -> npt.NDArray[Any]:
-    from pandas.api.types import is_bool_dtype, is_numeric_dtype
+    from pandas.api.types import is_bool_dtype, is_integer_dtype, is_numeric_dtype
 
     if name not in frame.columns:
         near = _nearest(name, [str(each) for each in frame.columns])
         raise Refusal(f"column `{name}`", "the data have no such column", near, "Check its spelling")
     values = frame[name]
+    if is_integer_dtype(values.dtype) and values.abs().max() > _EXACT:
+        values = values.astype(str)  # numbers of that size would run together as floats
     if is_numeric_dtype(values.dtype) or is_bool_dtype(values.dtype):
         return np.asarray(values.to_numpy(dtype=float, na_value=np.nan))
     texts = values.astype(object)

@@ -230,6 +230,15 @@ def agreements(spec: Specification, table: ModelTable) -> tuple[Agreement, ...]:
     return tuple(_agreement(name, printed, spec, table) for name, printed in spec.printed_terms)
 
 
+def reproduced(spec: Specification, agreement: tuple[Agreement, ...], table: ModelTable) -> str | None:
+    """yes, partly or no: whether estimates, errors and n are met as printed; None where nothing was printed."""
+    met = [holds for each in agreement for holds in (each.estimate, each.std_error) if holds is not None]
+    met += [] if spec.printed_n is None else [spec.printed_n.agrees(table.observations)]
+    if not met:
+        return None
+    return "yes" if all(met) else "partly" if any(met) else "no"
+
+
 def _agreement(name: str, printed: PrintedTerm, spec: Specification, table: ModelTable) -> Agreement:
     row = table.term(name)
     assert row is not None  # noqa: S101

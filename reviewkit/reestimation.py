@@ -21,7 +21,7 @@ from reviewkit.facts import Fact
 from reviewkit.fitting import FittedModel, check_focus, fit_alternative, fit_model, make_sample, submission_rows
 from reviewkit.implied import Focus, resolve_focus
 from reviewkit.joint import Progress, effective_clusters
-from reviewkit.model_table import Agreement, ModelTable, agreements, model_table, named_prints
+from reviewkit.model_table import Agreement, ModelTable, agreements, model_table, named_prints, reproduced
 from reviewkit.pairing import Task, arm_clusters, comparisons
 from reviewkit.refit_facts import refit_facts
 from reviewkit.refusals import NotEstimable, Refusal
@@ -142,10 +142,11 @@ def _not_compared(focus: tuple[Focus, ...], why: str | None) -> tuple[Comparison
 
 
 def _reproduced(spec: Specification, agreement: tuple[Agreement, ...], table: ModelTable) -> bool:
-    """Whether nothing printed speaks against the refit: estimates met; n met where it was printed."""
+    """Whether a conclusion may be drawn: all that was printed is met, or else the estimates and n are."""
+    state = reproduced(spec, agreement, table)
     estimates = [each.estimate for each in agreement if each.estimate is not None]
     n_met = spec.printed_n is None or spec.printed_n.agrees(table.observations)
-    return all(estimates) and n_met
+    return state in (None, "yes") or bool(estimates and all(estimates) and n_met)
 
 
 def _exhibits(found: Reestimation, design: Design, made: FittedModel, focus: Focus, label: str) -> tuple[Exhibit, ...]:

@@ -11,7 +11,7 @@ from reviewkit.design_matrix import Design
 from reviewkit.estimators.fit import leverage
 from reviewkit.facts import NOT_STATED, Fact, Source, SourceKind, Standing, Value
 from reviewkit.implied import Scale
-from reviewkit.model_table import ModelTable
+from reviewkit.model_table import ModelTable, reproduced
 from reviewkit.specification import Transform, Zeros
 from reviewkit.specified import TRANSFORM_WORDS
 
@@ -75,7 +75,7 @@ def _model_facts(found: "Reestimation", clusters: Mapping[str, float]) -> dict[s
         "errors.type": table.errors.type or None,
         "errors.clusters": float(table.clusters) if table.clusters else None,
         "n.used": table.observations,
-        "refit.reproduced": _reproduced(found),
+        "refit.reproduced": reproduced(found.specification, found.agreement, table),
         "refit.focus": focus,
         "refit.coefficient": row.estimate if row else None,
         "refit.coefficient_error": row.std_error if row else None,
@@ -95,16 +95,6 @@ def _separated(found: "Reestimation") -> float | None:
     if table is None:
         return None
     return float(sum(lost for why, lost in table.dropped if why == "fitted as a certain zero"))
-
-
-def _reproduced(found: "Reestimation") -> str | None:
-    """yes, partly or no: whether estimates, errors and n are met; None where nothing was printed."""
-    met = [holds for each in found.agreement for holds in (each.estimate, each.std_error) if holds is not None]
-    printed_n = found.specification.printed_n
-    met += [] if printed_n is None else [printed_n.agrees(found.submitted.observations)]
-    if not met:
-        return None
-    return "yes" if all(met) else "partly" if any(met) else "no"
 
 
 def _comparison_facts(first: Comparison, read: Comparison | None) -> dict[str, Value | None]:

@@ -1,5 +1,6 @@
 """Which two numbers are set against each other, on which rows, and when none are."""
 
+from dataclasses import replace
 from typing import Any
 
 import numpy as np
@@ -239,3 +240,36 @@ def test_dropping_zeros_keeps_negative_outcomes_where_the_transform_has_them(tra
     data = table(y=y, treated=np.arange(400.0) % 2)
     outcome = {"column": "y", "transform": transform, "zeros": "dropped"}
     assert refit(data, outcome=outcome, model={"terms": ["treated"]}).submitted.observations == kept
+
+
+def test_a_missed_error_alone_leaves_nothing_reproduced() -> None:
+    """Only a standard error is printed, and missed: the fact says no, and no conclusion is drawn."""
+    printed = {"terms": {"treated": {"std_error": "9.99"}}}
+    tables: dict[str, Any] = {"outcome": {"column": "y", "transform": "log_plus"}, "model": {"terms": ["treated"]}}
+    found = refit(amounts(), **tables, errors={"kind": "robust"}, printed=printed)
+    assert {fact.name: fact.value for fact in found.facts}["refit.reproduced"] == "no"
+    assert found.comparison[0].conclusion is None
+
+
+def test_large_whole_numbers_name_clusters_without_running_together() -> None:
+    data = amounts(rows=200, clusters=20)
+    names = 2**60 + data.frame["cluster"]
+    apart = replace(data, frame=data.frame.assign(cluster=names))
+    tables: dict[str, Any] = {"outcome": {"column": "y", "transform": "log_plus"}, "model": {"terms": ["treated"]}}
+    errors = {"kind": "cluster", "by": ["cluster"]}
+    assert refit(apart, **tables, errors=errors).submitted.clusters == 20
+
+
+def test_frequency_weights_describe_observations() -> None:
+    data = amounts(rows=300)
+    times = data.frame["w"].astype(int)
+    repeated = replace(data, frame=data.frame.loc[data.frame.index.repeat(times)])
+    tables: dict[str, Any] = {"outcome": {"column": "y", "transform": "log_plus"}}
+    weighted = refit(
+        data, **tables, model={"terms": ["treated"], "weights": {"column": "w", "kind": "frequency"}},
+        errors={"kind": "robust"},
+    )  # fmt: skip
+    plain = refit(repeated, **tables, model={"terms": ["treated"]}, errors={"kind": "robust"})
+    described = [{row[0]: row[1] for row in each.exhibits[0].rows} for each in (weighted, plain)]
+    for name in ("mean", "zeros, percent", "median", "treated = 1: mean", "treated = 0: rows"):
+        assert described[0][name] == pytest.approx(described[1][name])

@@ -10,6 +10,9 @@ from reviewkit.model_table import ModelTable
 from reviewkit.wording import counted, joined, number, share
 
 Array = npt.NDArray[np.float64]
+Mask = npt.NDArray[np.bool_]
+
+_EVERY = slice(None)
 
 FEWEST_IN_CLASS = 10
 """Rows under which classes of the outcome are put together, so that no single row shows."""
@@ -21,7 +24,7 @@ def sample_exhibit(design: Design, tables: tuple[ModelTable, ModelTable | None],
     `design` holds every usable row, also those that one model leaves out; `label` names the outcome with its unit;
     for a two-valued `focus` both groups are described.
     """
-    y, table = design.y, tables[0]
+    y, table = _observed(design), tables[0]
     rows: list[tuple[Cell, ...]] = [("rows in the table", design.table_rows)]
     rows += [(f"left out: {why}", lost) for why, lost in design.dropped]
     rows.append(("rows that can be used", design.rows))
@@ -30,7 +33,7 @@ def sample_exhibit(design: Design, tables: tuple[ModelTable, ModelTable | None],
         rows.append(("observations (frequency weights)", float(design.observations)))
     if table.clusters:
         rows.append(("clusters", table.clusters))
-    zeros = design.share(y == 0)
+    zeros = float((y == 0).mean())
     rows += [("zeros, percent", 100 * zeros), ("distinct values", int(np.unique(y).size))]
     rows += [("mean", float(y.mean())), ("standard deviation", float(y.std(ddof=1)) if y.size > 1 else None)]
     rows += _quartiles("quartile", y)
@@ -58,11 +61,17 @@ def _quartiles(name: str, y: Array) -> list[tuple[Cell, ...]]:
     ]
 
 
+def _observed(design: Design, rows: Mask | slice = _EVERY) -> Array:
+    """The outcome of each observation in `rows`: a row as often as its frequency weight says."""
+    y = design.y[rows]
+    return y if design.multiplicity is None else np.repeat(y, design.multiplicity[rows].astype(int))
+
+
 def _by_group(design: Design, focus: Focus) -> list[tuple[Cell, ...]]:
     """Rows, zeros, mean, and mean above zero of both groups; none where a group is too small to be described."""
     if focus.values is None or focus.column is None:
         return []
-    groups = [(value, design.y[design.columns[focus.column] == value]) for value in focus.values]
+    groups = [(value, _observed(design, design.columns[focus.column] == value)) for value in focus.values]
     if min(part.size for _, part in groups) < FEWEST_IN_CLASS:
         return []
     rows: list[tuple[Cell, ...]] = []
