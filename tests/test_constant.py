@@ -44,6 +44,9 @@ def test_curve_and_slope_are_those_of_refits(transform: str, parameter: str) -> 
     up, down = (coefficient({"transform": transform, parameter: 0.7 * math.exp(s)})[0] for s in (step, -step))
     assert slope.rows[0][1] == pytest.approx((up - down) / (2 * step), rel=1e-5)
     assert slope.rows[0][3] < slope.rows[0][1] < slope.rows[0][4]
+    facts = {fact.name: fact.value for fact in slope.facts}
+    assert facts["constant.doubled"] == pytest.approx(math.log(2) * slope.rows[0][1])
+    assert facts["constant.doubled_low"] < facts["constant.doubled"] < facts["constant.doubled_high"]
 
 
 def test_slope_tends_to_minus_the_effect_on_being_above_zero() -> None:

@@ -18,6 +18,7 @@ from reviewkit.estimators.covariance import infer
 from reviewkit.estimators.fit import Sample
 from reviewkit.estimators.least_squares import fit_least_squares
 from reviewkit.exhibit import Cell, Exhibit, Interval, IntervalFigure
+from reviewkit.facts import Fact, Source, SourceKind, Standing
 from reviewkit.fitting import make_sample
 from reviewkit.implied import Focus
 from reviewkit.specification import Outcome, PerExposure, Specification, Transform
@@ -26,6 +27,7 @@ from reviewkit.wording import estimate, interval, number
 
 Array = npt.NDArray[np.float64]
 
+_DOUBLED = ("constant.doubled", "constant.doubled_low", "constant.doubled_high")
 FACTORS = (0.1, 0.5, 1.0, 2.0, 10.0)
 """Constants told, as multiples of the paper's; common practice, no source."""
 
@@ -103,7 +105,12 @@ def _slope(spec: Specification, design: Design, sample: Sample, place: int) -> E
         rows,
         f"Doubling the {what} moves the coefficient by {estimate(doubled[0])} ({interval(doubled[1], doubled[2])}), "
         f"near the paper's own {what}.",
+        facts=tuple(_fact(spec.name, name, value) for name, value in zip(_DOUBLED, doubled, strict=True)),
     )
+
+
+def _fact(model: str, name: str, value: float) -> Fact:
+    return Fact(name, value, Standing.DONE, Source(SourceKind.EXHIBIT, "local-slope"), f"model:{model}")
 
 
 def _derivative(outcome: Outcome, design: Design) -> Array:
