@@ -17,7 +17,7 @@ import drop_off_bays  # noqa: E402
 import lending_desks  # noqa: E402
 
 PICTURE = HERE / "pictures" / "note.png"
-PAGE_OF_MODELS = 4
+PAGE_OF_MODELS = 3
 STUDIES = {"drop-off-bays": drop_off_bays, "lending-desks": lending_desks}
 
 
