@@ -339,7 +339,7 @@ def test_letters_stand_out_from_their_ground(letters, ground, is_dark):
 # --- in a browser -----------------------------------------------------------------------------------------------
 
 needs_browser = pytest.mark.skipif(browser.FOUND is None, reason="needs chromium")
-WIDTHS = [(360, 1), (380, 1), (1000, 1), (1000, 2), (1400, 1)]
+WIDTHS = [(360, 1), (380, 1), (660, 1), (1000, 1), (1000, 2), (1400, 1)]
 TOO_WIDE = "[document.documentElement.scrollWidth, document.documentElement.clientWidth]"
 LINES = """
 [...document.querySelectorAll('main p, main li, figcaption')].flatMap(each => {
