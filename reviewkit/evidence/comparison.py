@@ -67,7 +67,7 @@ def _figure(scale: Scale, comparisons: tuple[Comparison, ...]) -> IntervalFigure
         ):
             low, high = ends or (None, None)
             rows.append(Interval(name, value, low, high))
-    distinct = tuple({(row.label, row.estimate): row for row in rows}.values())
+    distinct = tuple({row.label: row for row in rows}.values())
     return IntervalFigure(SCALE_WORDS[scale], distinct)
 
 
