@@ -63,9 +63,7 @@ def test_submission_is_taken_at_its_word(transform: Any, forward: Any, inverse: 
     data = amounts()
     f = data.frame
     w = f["w"].to_numpy() if weighted else np.ones(len(f))
-    x = np.column_stack(
-        [np.ones(len(f)), f["treated"], np.log(f["size"]), f["treated"] * np.log(f["size"])]
-    )
+    x = np.column_stack([np.ones(len(f)), f["treated"], np.log(f["size"]), f["treated"] * np.log(f["size"])])
     one, none = x.copy(), x.copy()
     one[:, 1], one[:, 3] = 1, x[:, 2]
     none[:, 1], none[:, 3] = 0, 0
