@@ -291,14 +291,17 @@ def test_a_lock_killed_before_it_was_written_is_set_aside_when_old(case):
     lock.touch()
     os.utime(lock, (time.time() - 60, time.time() - 60))
     with casefolder.working_in(case):
-        pass
+        assert lock.read_text(encoding="utf-8").startswith(str(os.getpid()))
+    assert not lock.exists()
 
 
 @pytest.mark.skipif(not Path("/proc/self/stat").exists(), reason="needs process start times")
 def test_another_process_that_got_the_same_number_holds_no_lock(case):
-    (case.path / casefolder.LOCK).write_text(f"{os.getpid()} 1")
+    lock = case.path / casefolder.LOCK
+    lock.write_text(f"{os.getpid()} 1")
     with casefolder.working_in(case):
-        pass
+        assert lock.read_text(encoding="utf-8") != f"{os.getpid()} 1"
+    assert not lock.exists()
 
 
 def test_of_many_processes_that_find_a_stale_lock_one_works_at_a_time(case):

@@ -106,7 +106,10 @@ def test_a_perfect_fit_is_valid_too() -> None:
 
 def test_an_outcome_with_quotes_and_blanks_in_its_name_is_valid() -> None:
     frame = amounts().frame.rename(columns={"y": 'the "sum", größe'})
-    model_of(table(**frame), outcome={"column": 'the "sum", größe', "transform": "sqrt"}, model={"terms": ["treated"]})
+    found = model_of(
+        table(**frame), outcome={"column": 'the "sum", größe', "transform": "sqrt"}, model={"terms": ["treated"]}
+    )
+    assert found["submitted"]["outcome"] == 'sqrt(`the "sum", größe`)'
 
 
 @pytest.mark.parametrize(
