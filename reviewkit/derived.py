@@ -8,9 +8,10 @@ from statistics import NormalDist
 from reviewkit.clauses import Lookup
 from reviewkit.facts import NOT_STATED, Fact, Facts, NotStated, Source, SourceKind, Standing, Value
 from reviewkit.printed import Printed
-from reviewkit.wording import change, interval, sign, size_percent
+from reviewkit.wording import change, interval, p_value, sign, size_percent
 
 _LARGEST_EXPONENT = 700.0
+_SIZE = 0.05  # of a test of the form; common practice, no source
 _WITH_ZEROS = ("dropped", "replaced by a small value", "own part of a two-part model")
 
 
@@ -22,6 +23,21 @@ class Derivation:
     about: str
     needs: tuple[str, ...]
     work_out: Callable[[Lookup], Value | None]
+
+
+def forms_in_words(lookup: Lookup) -> Value | None:
+    """What the tests of both means' forms say, both told alike; a lottery keeps a ratio of means whatever the form."""
+    p, own = lookup("form.alternative_p"), lookup("form.submitted_p")
+    if not isinstance(p, float) or not isinstance(own, float):
+        return None
+    found = [f"{'speaks' if each < _SIZE else 'does not speak'} against {name}" for name, each in _forms(p, own)]
+    lottery = lookup("assignment.random") == "yes"
+    kept = "; where a lottery assigned it, the ratio of means does not hang on the form" if lottery else ""
+    return f"a test {found[0]} ({p_value(p)}) and {found[1]} ({p_value(own)}){kept if p < _SIZE else ''}"
+
+
+def _forms(p: float, own: float) -> tuple[tuple[str, float], tuple[str, float]]:
+    return ("the form of the model of the mean", p), ("that of the submitted model", own)
 
 
 def percent_of_coefficient(lookup: Lookup) -> Value | None:
@@ -240,6 +256,9 @@ DERIVATIONS = (
     Derivation("refit.direction_holds", "model", _BOTH, direction_holds),
     Derivation("refit.signs_differ", "model", _BOTH, signs_differ),
     Derivation("refit.no_difference_found", "model", ("refit.difference_excludes_zero",), no_difference_found),
+    Derivation(
+        "form.in_words", "model", ("form.alternative_p", "form.submitted_p", "assignment.random"), forms_in_words
+    ),
     Derivation("assignment.after_selection", "study", ("assignment.random",), selected_after_lottery),
     Derivation("clusters.smaller_arm", "model", ("refit.treated_clusters", "refit.untreated_clusters"), smaller_arm),
 )

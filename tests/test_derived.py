@@ -221,3 +221,17 @@ def test_a_percent_is_named_a_hundred_times_the_coefficient_only_where_it_can_be
     assert derived("claim.percent_reading", claim__coefficient=P("0.506"), claim__percent=P("51"))
     assert derived("claim.percent_reading", claim__coefficient=P("0.05"), claim__percent=P("5")) is None
     assert derived("claim.percent_reading", claim__coefficient=P("0.506"), claim__percent=P("66")) is None
+
+
+def test_tests_of_both_forms_are_told_alike_and_a_lottery_keeps_the_ratio() -> None:
+    both = {"form__alternative_p": 0.0004, "form__submitted_p": 0.4}
+    told = derived("form.in_words", **both)
+    assert told == (
+        "a test speaks against the form of the model of the mean (p < 0.001) and does not speak against that of the "
+        "submitted model (p = 0.40)"
+    )
+    assert "lottery" in derived("form.in_words", **both, assignment__random="yes")
+    quiet = {**both, "form__alternative_p": 0.3, "assignment__random": "yes"}
+    assert derived("form.in_words", **quiet).count("does not speak") == 2
+    assert "lottery" not in derived("form.in_words", **quiet)
+    assert derived("form.in_words", form__alternative_p=0.3) is None
