@@ -25,7 +25,7 @@ from reviewkit.model_table import Agreement, ModelTable, agreements, model_table
 from reviewkit.pairing import Task, arm_clusters, comparisons
 from reviewkit.refit_facts import refit_facts
 from reviewkit.refusals import NotEstimable, Refusal
-from reviewkit.specification import Estimator, Specification, Transform
+from reviewkit.specification import ErrorKind, Errors, Estimator, Specification, Transform
 from reviewkit.steps_between import why_no_account
 from reviewkit.wording import counted
 
@@ -108,7 +108,7 @@ def _reestimate(spec: Specification, table: DataTable, progress: Progress) -> Re
     first = _model_table(spec, spec.estimator, submitted)
     progress("fitting the alternative")
     usable, alternative, why_not = fit_alternative(spec, design)
-    second = _model_table(spec, Estimator.POISSON, alternative) if alternative else None
+    second = _alternative_table(spec, alternative) if alternative else None
     agreement = agreements(spec, first)
     task = Task(spec, design, _reproduced(spec, agreement, first), progress)
     compared = comparisons(task, own, usable, focus) if alternative else _not_compared(focus, why_not)
@@ -137,6 +137,12 @@ def _model_table(spec: Specification, estimator: Estimator, made: FittedModel) -
     return model_table(spec, estimator, made.fit, made.design, made.left_out)
 
 
+def _alternative_table(spec: Specification, made: FittedModel) -> ModelTable:
+    """Quasi-likelihood needs robust errors, also beside a submission with classical ones."""
+    errors = Errors() if spec.errors.kind is ErrorKind.CLASSICAL else spec.errors
+    return _model_table(replace(spec, errors=errors), Estimator.POISSON, made)
+
+
 def _not_compared(focus: tuple[Focus, ...], why: str | None) -> tuple[Comparison, ...]:
     return tuple(Comparison(each.term, Kind.MODEL, None, "common", why=why) for each in focus)
 
@@ -156,7 +162,7 @@ def _exhibits(found: Reestimation, design: Design, made: FittedModel, focus: Foc
     place = made.design.names.index(names[0])
     return (
         sample_exhibit(design, tables, label, focus),
-        models_exhibit(*tables, found.agreement, names),
+        models_exhibit(*tables, found.agreement, names, found.specification.printed_n),
         comparison_exhibit(found.comparison, LEVEL),
         percent_exhibit(*tables, names),
         baseline_exhibit(linear, made.design, place, found.specification.errors, label),

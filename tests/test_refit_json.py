@@ -137,3 +137,22 @@ def test_the_schema_refuses_a_null_without_its_reason() -> None:
     content["models"][0]["submitted"]["terms"][0]["percent_why_not"] = None
     with pytest.raises(jsonschema.ValidationError):
         check("refit", content)
+
+
+def test_the_alternative_has_robust_errors_beside_classical_ones() -> None:
+    outcome, terms = {"column": "y", "transform": "log_plus"}, {"terms": ["treated"]}
+    classical = model_of(outcome=outcome, model=terms, errors={"kind": "classical"})
+    robust = model_of(outcome=outcome, model=terms, errors={"kind": "robust", "type": "HC1"})
+    assert classical["submitted"]["errors"]["kind"] == "classical"
+    assert classical["submitted"]["terms"] != robust["submitted"]["terms"]
+    assert classical["alternative"]["terms"] == robust["alternative"]["terms"]
+    models = next(each for each in classical["exhibits"] if each["name"] == "models")
+    assert "errors classical, those of the alternative heteroskedasticity-robust (HC1)" in models["sentence"]
+
+
+def test_a_printed_number_of_observations_that_is_not_met_is_named() -> None:
+    found = model_of(
+        outcome={"column": "y", "transform": "log_plus"}, model={"terms": ["treated"]}, printed={"n": "17", "terms": {}}
+    )
+    models = next(each for each in found["exhibits"] if each["name"] == "models")
+    assert "Not met to the printed digits: number of observations (printed 17)" in models["sentence"]

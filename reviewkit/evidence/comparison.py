@@ -17,6 +17,7 @@ SCALE_WORDS = {
     Scale.ELASTICITY: "elasticity of the mean",
     Scale.LEVEL: "difference of means in the outcome's unit",
 }
+_ROWS = {"own": "with each model on its own rows, "}
 COLUMNS = ("term", "number", "value", "low", "high")
 
 
@@ -80,7 +81,7 @@ def comparison_sentence(each: Comparison) -> str:
         if each.kind is Kind.MODEL
         else "the coefficient, read as in a plain log model, says"
     )
-    told = f"For {each.term}, {side} {_told(each, each.submitted, each.submitted_interval)}, "
+    told = f"For {each.term}, {_ROWS.get(each.rows, '')}{side} {_told(each, each.submitted, each.submitted_interval)}, "
     told += f"the alternative {_told(each, each.alternative, each.alternative_interval)}"
     return f"{told}; {verdict_words(each)}."
 

@@ -20,8 +20,9 @@ def show_refit(found: Reestimation, plain: bool = False, console: Console | None
     focus = tuple(dict.fromkeys(each.term for each in found.comparison))
     _heading(to, f"{clean(found.data_name)}: {_models(found)}", plain)
     _table(to, found, focus, plain)
-    if found.agreement:
-        _say(to, agreement_sentence(found.agreement))
+    printed_n = found.specification.printed_n
+    if found.agreement or printed_n:
+        _say(to, agreement_sentence(found.agreement, printed_n, found.submitted.observations))
     _heading(to, "Comparison", plain)
     for each in found.comparison:
         _say(to, f"• {clean(comparison_sentence(each))}")
@@ -48,11 +49,12 @@ def _heading(to: Console, line: str, plain: bool) -> None:
 
 
 def _models(found: Reestimation) -> str:
-    table = found.submitted
+    table, other = found.submitted, found.alternative
+    beside = f", those of the alternative {errors_text(other.errors)}" if other and other.errors != table.errors else ""
     how = "least squares" if table.estimator == "ols" else str(table.estimator)
     return (
         f"{how} on {clean(table.outcome)}, {number(table.observations)} observations, "
-        f"errors {clean(errors_text(table.errors, table.clusters))}"
+        f"errors {clean(errors_text(table.errors, table.clusters))}{beside}"
     )
 
 
