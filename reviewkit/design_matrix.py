@@ -1,5 +1,6 @@
 """From a specification and a table to arrays: the design matrix, the outcome, weights, offsets and clusters."""
 
+import re
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, Any
@@ -238,6 +239,9 @@ def _column(frame: "pandas.DataFrame", name: str) -> npt.NDArray[Any]:
     from pandas.api.types import is_bool_dtype, is_integer_dtype, is_numeric_dtype
 
     if name not in frame.columns:
+        if re.match(r"[LFD]\d*\.", name):
+            why = "lags and leads need the data's order, which a specification does not hold"
+            raise Refusal(f"column `{name}`", why, remedy="Make a column of it, and name that")
         near = _nearest(name, [str(each) for each in frame.columns])
         raise Refusal(f"column `{name}`", "the data have no such column", near, "Check its spelling")
     values = frame[name]

@@ -3,6 +3,7 @@
 import tomllib
 from collections.abc import Mapping
 from dataclasses import replace
+from difflib import get_close_matches
 from pathlib import Path
 from typing import TYPE_CHECKING
 
@@ -11,13 +12,15 @@ from reviewkit.casefolder import CaseFolder
 from reviewkit.note import Audience, Note, Paragraph, Points, Section
 from reviewkit.refusals import Refusal
 from reviewkit.review import Review, look
-from reviewkit.rules import Importance, State
+from reviewkit.rules import Importance, RuleBook, State
 from reviewkit.specification import read_specification, specification_text
 
 if TYPE_CHECKING:
     from reviewkit.compose.content import NoteWishes, Repeat
 
 FORMATS = ("docx", "md", "txt", "html", "json")
+OWN_PARTS = ("opening", "closing", "editor")
+"""Parts of a note that the referee's own words may go to, besides points."""
 USUAL = ("docx", "txt", "md")
 """Formats that are written where none is asked for."""
 
@@ -44,7 +47,7 @@ def notes(review: Review) -> Mapping[str, Note]:
         review.findings,
         review.book,
         review.results.exhibits if review.results is not None and not review.results.is_old else (),
-        _wishes(review.case),
+        _wishes(review.case, review.book),
         _repeats(review.case),
     )
     return {"to-authors": compose(content, Audience.AUTHORS), "to-editor": compose(content, Audience.EDITOR)}
@@ -115,14 +118,20 @@ def _write_format(note: Note, path: Path, ending: str) -> None:
                 raise Refusal("--as", f"`{ending}` is no format of notes", ", ".join(FORMATS))
 
 
-def _wishes(case: CaseFolder) -> "NoteWishes":
+def _wishes(case: CaseFolder, book: RuleBook) -> "NoteWishes":
     from reviewkit.compose.content import wishes_from
 
     text = casefolder.note_wishes_text(case)
     try:
-        return wishes_from(tomllib.loads(text), casefolder.NOTE)
+        wishes = wishes_from(tomllib.loads(text), casefolder.NOTE)
     except tomllib.TOMLDecodeError as problem:
         raise Refusal(casefolder.NOTE, f"not valid TOML ({problem})", remedy="Correct that line") from None
+    rules = {rule.name for rule in book.rules}
+    for name in (*wishes.order, *wishes.dropped, *(each for each in wishes.own_words if each not in OWN_PARTS)):
+        if name not in rules:
+            near = ", ".join(get_close_matches(name, rules, 3)) or "names that `reviewkit show` lists"
+            raise Refusal(casefolder.NOTE, f"there is no rule `{name}`", near, "Check its spelling")
+    return wishes
 
 
 def _repeats(case: CaseFolder) -> tuple["Repeat", ...]:

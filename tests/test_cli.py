@@ -2,13 +2,14 @@
 
 import json
 import os
+import shutil
 import subprocess
 import sys
 
 import pytest
 
 from reviewkit.cli import run
-from reviewkit.shipped import demo_folder
+from reviewkit.shipped import demo_folder, rules_folder
 
 ANSWERS = demo_folder() / "lending-desks" / "answers.toml"
 
@@ -462,8 +463,14 @@ def test_percent_without_an_error_gives_no_interval(capsys):
 
 
 def test_a_negative_coefficient_can_be_typed(capsys):
-    assert run(["percent", "--json", "--", "-0.38"]) == 0
-    assert json.loads(capsys.readouterr().out)["percent"] < 0
+    for arguments in (["percent", "-0.38", "--se", "0.11"], ["percent", "--se", "0.11", "--", "-0.38"]):
+        assert run([*arguments, "--json"] if "--" not in arguments else ["percent", "--json", *arguments[1:]]) == 0
+        assert json.loads(capsys.readouterr().out)["percent"] == pytest.approx(-31.6139, abs=1e-4)
+
+
+def test_a_specification_that_is_not_there_is_told_as_such(tmp_path, capsys):
+    assert run(["refit", str(tmp_path / "nowhere.toml")]) == 2
+    assert "nowhere.toml: there is no such file" in capsys.readouterr().err
 
 
 @pytest.mark.parametrize("options", [["--zeros"], ["--constant", "1"], ["--constant", "1", "--zeros"]])
@@ -482,4 +489,28 @@ def test_rules_are_listed_shown_and_checked(tmp_path, capsys):
     name = next(line.split(":")[0].strip() for line in capsys.readouterr().out.splitlines() if line.startswith("  "))
     assert run(["rules", "show", name]) == 0
     assert "raised when" in capsys.readouterr().out
+    assert run(["rules", "check", str(tmp_path)]) == 2
+    assert "no rules are found in it" in capsys.readouterr().err
+
+
+@pytest.mark.parametrize("wish", ['order = ["no-such-rule"]', '[dropped]\nno-such-rule = "mine"'])
+def test_a_wish_about_a_rule_that_does_not_exist_is_refused(wish, case, capsys):
+    (case / "note.toml").write_text(f"format = 1\n{wish}\n", encoding="utf-8")
+    assert run(["draft", str(case)]) == 2
+    assert "note.toml: there is no rule `no-such-rule`" in capsys.readouterr().err
+
+
+def test_a_demo_where_nothing_may_be_written_is_refused_in_one_line(tmp_path, monkeypatch, capsys):
+    def denied(*_, **__):
+        raise PermissionError(13, "no")
+
+    monkeypatch.setattr("pathlib.Path.mkdir", denied)
+    assert run(["demo", str(tmp_path / "demo")]) == 2
+    assert "it cannot be made" in capsys.readouterr().err
+
+
+def test_one_rule_is_told_in_the_singular(tmp_path, capsys):
+    (tmp_path / "topic").mkdir()
+    shutil.copy(rules_folder() / "outcome" / "zeros-dropped.toml", tmp_path / "topic" / "a-rule-of-our-own.toml")
     assert run(["rules", "check", str(tmp_path)]) == 0
+    assert capsys.readouterr().out.startswith("1 rule read, ")

@@ -308,3 +308,8 @@ def test_a_column_can_be_set_in_every_row() -> None:
         expected = with_terms("size*factor(soil)", "size^2", "factor(year)", frame=kept).x[:12]
         assert np.array_equal(made.with_column(column, value), expected)
     assert np.array_equal(made.x, with_terms("size*factor(soil)", "size^2", "factor(year)").x)
+
+
+def test_a_lag_is_refused_with_its_reason() -> None:
+    with pytest.raises(Refusal, match=r"`L\.size`: lags and leads need the data's order"):
+        with_terms("L.size")
