@@ -183,7 +183,7 @@ def draft(
     _alert(review.look(case).findings, alert_on)
 
 
-@app.command()
+@app.command(context_settings={"ignore_unknown_options": True})  # -0.38 is a number
 def percent(
     b: Annotated[str, typer.Argument(help="the coefficient, as printed", show_default=False)],
     se: Annotated[str | None, typer.Option(help="its standard error")] = None,

@@ -8,6 +8,7 @@ from pathlib import Path
 from reviewkit import casefolder, drafting, review, shipped, unattended
 from reviewkit.casefolder import Input
 from reviewkit.refusals import Refusal
+from reviewkit.safekeeping import refusing
 from reviewkit.screen import telling
 
 STUDY = "study.toml"
@@ -25,7 +26,8 @@ def run(folder: Path, say: Callable[[str], None]) -> tuple[Path, ...]:
 def _run_study(study: Path, folder: Path, say: Callable[[str], None]) -> tuple[Path, ...]:
     described = tomllib.loads((study / STUDY).read_text("utf-8"))
     materials, case_folder = folder / "received", folder / "case"
-    materials.mkdir(parents=True, exist_ok=True)
+    with refusing(folder, "made"):
+        materials.mkdir(parents=True, exist_ok=True)
     names = [described["manuscript"], described["answers"], *described.get("data", [])]
     for name in names:
         if not (materials / name).exists():

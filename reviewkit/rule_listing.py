@@ -6,6 +6,7 @@ from reviewkit.records import Json
 from reviewkit.refusals import Refusal
 from reviewkit.review import rule_book
 from reviewkit.rules import Rule, RuleBook
+from reviewkit.wording import counted
 
 
 def lines() -> tuple[str, ...]:
@@ -81,9 +82,14 @@ def checked(folder: Path) -> tuple[str, tuple[str, ...]]:
     book = rule_book((folder,), examples=True)
     own = {path.stem for path in folder.rglob("*.toml")}
     rules = [rule for rule in book.rules if rule.name in own]
+    if not rules:
+        raise Refusal(folder.name, "no rules are found in it", "files such as TOPIC/RULE.toml below it")
     wrong = [message for rule in rules for message in _failing(rule, book)]
     examples = sum(len(rule.examples) for rule in rules)
-    return f"{len(rules)} rules read, {examples} examples run, {len(wrong)} not as stated.", tuple(wrong)
+    return (
+        f"{counted(len(rules), 'rule')} read, {counted(examples, 'example')} run, {len(wrong)} not as stated.",
+        tuple(wrong),
+    )
 
 
 def _failing(rule: Rule, book: RuleBook) -> list[str]:

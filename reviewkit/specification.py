@@ -164,6 +164,8 @@ def read_specification(path: Path) -> Specification:
     """
     try:
         text = path.read_text("utf-8-sig")
+    except FileNotFoundError:
+        raise Refusal(path.name, "there is no such file", remedy="Check the path") from None
     except (OSError, UnicodeDecodeError) as error:
         raise Refusal(path.name, "the file cannot be read as text", "a specification in UTF-8") from error
     try:
