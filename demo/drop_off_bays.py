@@ -11,6 +11,7 @@ from typing import Any
 
 import numpy as np
 import pandas as pd
+import pyreadstat
 import statsmodels.api as sm
 
 from paper import PaperSection, ResultsTable, write_paper
@@ -29,6 +30,8 @@ LABELS = {
 }
 _SEED = 20_260_317
 _HARBOURS = 84
+_FORMAT_118 = 14
+"""What the library that writes .dta files calls the 118th version of the format."""
 
 
 def draw_landings() -> pd.DataFrame:
@@ -116,13 +119,7 @@ def write_study(folder: Path) -> None:
     """Write data and manuscript; every printed number is computed from the data."""
     landings = draw_landings()
     landings.to_csv(folder / "landings.csv", index=False, lineterminator="\n")
-    landings.to_stata(
-        folder / "landings.dta",
-        write_index=False,
-        variable_labels=LABELS,
-        version=118,
-        time_stamp=pd.Timestamp("2024-01-01").to_pydatetime(),
-    )
+    pyreadstat.write_dta(landings, folder / "landings.dta", column_labels=LABELS, version=_FORMAT_118)
     write_paper(folder / "manuscript.docx", TITLE, _sections(landings))
 
 
