@@ -164,8 +164,6 @@ def read_specification(path: Path) -> Specification:
     """
     try:
         text = path.read_text("utf-8-sig")
-    except FileNotFoundError:
-        raise Refusal(path.name, "there is no such file", remedy="Check the path") from None
     except (OSError, UnicodeDecodeError) as error:
         raise Refusal(path.name, "the file cannot be read as text", "a specification in UTF-8") from error
     try:
@@ -317,8 +315,7 @@ class _Table:
         return choices(value)
 
     def printed(self, key: str) -> Printed | None:
-        value = self.values.get(key)
-        return None if value is None else read_printed(str(value), self.place(key))
+        return read_printed(str(self.values[key]), self.place(key)) if key in self.values else None
 
 
 def _check_keys(values: Mapping[str, Any], where: str) -> None:
@@ -337,12 +334,11 @@ def _outcome(table: _Table) -> Outcome:
     replacement = table.positive("replacement")
     if (zeros is Zeros.REPLACED) != (replacement is not None):
         raise Refusal(table.place("replacement"), 'it goes with zeros = "replaced"', "both or neither")
-    constant, scale = table.positive("constant"), table.positive("scale")
     return Outcome(
         column=table.required("column"),
         transform=table.choice("transform", Transform) or Transform.NONE,
-        constant=1.0 if constant is None else constant,
-        scale=1.0 if scale is None else scale,
+        constant=table.positive("constant") or 1.0,
+        scale=table.positive("scale") or 1.0,
         zeros=zeros,
         replacement=replacement,
         per_exposure=table.choice("per_exposure", PerExposure) or PerExposure.NO,
