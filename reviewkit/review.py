@@ -226,6 +226,8 @@ def load_numbers() -> None:
 
 def reestimate_file(path: Path, progress: Progress | None = None) -> "Reestimation":
     """Re-estimate a lone specification file; its data lie beside it."""
+    if not path.exists():
+        raise Refusal(path.name, "there is no such file", remedy="Check the path")
     spec = read_specification(path)
     table = _table(path.parent / spec.data, progress)
     estimated = _reestimated(spec, table, progress)
