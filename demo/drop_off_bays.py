@@ -119,8 +119,17 @@ def write_study(folder: Path) -> None:
     """Write data and manuscript; every printed number is computed from the data."""
     landings = draw_landings()
     landings.to_csv(folder / "landings.csv", index=False, lineterminator="\n")
-    pyreadstat.write_dta(landings, folder / "landings.dta", column_labels=LABELS, version=_FORMAT_118)
+    _write_dta(landings, folder / "landings.dta")
     write_paper(folder / "manuscript.docx", TITLE, _sections(landings))
+
+
+def _write_dta(landings: pd.DataFrame, path: Path) -> None:
+    """Write the same table as a .dta file, unless the file holds it already: the writer stamps the time of day."""
+    if path.exists():
+        held, about = pyreadstat.read_dta(path)
+        if about.column_names_to_labels == LABELS and held.astype(landings.dtypes).equals(landings):
+            return
+    pyreadstat.write_dta(landings, path, column_labels=LABELS, version=_FORMAT_118)
 
 
 def _sections(landings: pd.DataFrame) -> tuple[PaperSection, ...]:
