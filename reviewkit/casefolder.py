@@ -153,10 +153,15 @@ def save_settings(case: CaseFolder, settings: Settings) -> CaseFolder:
     return replace(case, settings=settings)
 
 
-def giving(case: CaseFolder, kind: Input, path: Path) -> CaseFolder:
-    """The case with that input noted, as a path from the case folder and its checksum."""
+def check_given(path: Path) -> None:
+    """Refuse an input that is not there."""
     if not path.exists():
         raise Refusal(path.name, "there is no such file or folder", remedy="Check the path")
+
+
+def giving(case: CaseFolder, kind: Input, path: Path) -> CaseFolder:
+    """The case with that input noted, as a path from the case folder and its checksum."""
+    check_given(path)
     sha256 = safekeeping.file_checksum(path) if path.is_file() else ""
     inputs = {**case.settings.inputs, kind: Given(relative(path, case.path), sha256)}
     return save_settings(case, replace(case.settings, inputs=inputs))

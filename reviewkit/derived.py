@@ -8,9 +8,15 @@ from statistics import NormalDist
 from reviewkit.clauses import Lookup
 from reviewkit.facts import NOT_STATED, Fact, Facts, NotStated, Source, SourceKind, Standing, Value
 from reviewkit.printed import Printed
-from reviewkit.wording import change, interval, p_value, sign, size_percent
+from reviewkit.wording import change, estimate, interval, joined, p_value, sign, size_percent
 
 _LARGEST_EXPONENT = 700.0
+_STEPS = {
+    "weighting": "weighing observations by their size",
+    "zeros": "observations with a zero outcome",
+    "amounts": "the spread of the other observations",
+    "constant": "what was added to the outcome",
+}
 _SIZE = 0.05  # of a test of the form; common practice, no source
 _WITH_ZEROS = ("dropped", "replaced by a small value", "own part of a two-part model")
 
@@ -34,6 +40,16 @@ def forms_in_words(lookup: Lookup) -> Value | None:
     lottery = lookup("assignment.random") == "yes"
     kept = "; where a lottery assigned it, the ratio of means does not hang on the form" if lottery else ""
     return f"a test {found[0]} ({p_value(p)}) and {found[1]} ({p_value(own)}){kept if p < _SIZE else ''}"
+
+
+def steps_in_words(lookup: Lookup) -> Value | None:
+    """Every step of the account that is clearly off zero; what is left out is said to be left out."""
+    amounts = {name: lookup(f"step.{name}") for name in _STEPS}
+    clear = [name for name in _STEPS if lookup(f"step.{name}_off_zero") == "yes"]
+    told = [f"{estimate(amounts[name])} from {_STEPS[name]}" for name in clear if isinstance(amounts[name], float)]
+    if not told:
+        return None
+    return joined(told) + ("; the other parts are not clearly off zero" if len(clear) < len(_STEPS) else "")
 
 
 def _forms(p: float, own: float) -> tuple[tuple[str, float], tuple[str, float]]:
@@ -256,6 +272,12 @@ DERIVATIONS = (
     Derivation("refit.direction_holds", "model", _BOTH, direction_holds),
     Derivation("refit.signs_differ", "model", _BOTH, signs_differ),
     Derivation("refit.no_difference_found", "model", ("refit.difference_excludes_zero",), no_difference_found),
+    Derivation(
+        "step.in_words",
+        "model",
+        tuple(f"step.{name}{ending}" for name in _STEPS for ending in ("", "_off_zero")),
+        steps_in_words,
+    ),
     Derivation(
         "form.in_words", "model", ("form.alternative_p", "form.submitted_p", "assignment.random"), forms_in_words
     ),

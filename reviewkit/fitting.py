@@ -14,7 +14,7 @@ from reviewkit.joint import FITTERS
 from reviewkit.refusals import NotEstimable
 from reviewkit.specification import Estimator, Specification, Transform, Zeros
 from reviewkit.transforms import transformed
-from reviewkit.wording import counted, joined
+from reviewkit.wording import counted, some_of
 
 Array = npt.NDArray[np.float64]
 Mask = npt.NDArray[np.bool_]
@@ -34,7 +34,7 @@ class FittedModel:
     @property
     def left_out(self) -> tuple[str, ...]:
         """The collinear columns in words."""
-        return tuple(f"{name} (a combination of {joined(others)})" for name, others in self.collinear)
+        return tuple(f"{name} (a combination of {some_of(others)})" for name, others in self.collinear)
 
 
 def submission_rows(spec: Specification, design: Design) -> Mask:
@@ -99,7 +99,7 @@ def check_focus(focus: tuple[Focus, ...], made: FittedModel) -> None:
         for name, others in made.collinear:
             if each.term == name or each.term in others:
                 rest = [other for other in (name, *others) if other != each.term]
-                raise NotEstimable(f"term `{each.term}`", f"its effect cannot be told from that of {joined(rest)}")
+                raise NotEstimable(f"term `{each.term}`", f"its effect cannot be told from that of {some_of(rest)}")
 
 
 def fit_alternative(spec: Specification, design: Design) -> tuple[Mask, FittedModel | None, str | None]:

@@ -41,7 +41,9 @@ def lines(found: PercentReadings) -> tuple[str, ...]:
     """The readings in words."""
     if found.percent is None:
         return ("No reading in percent: " + (found.percent_why_not or "it does not exist") + ".",)
-    said = [f"{signed_percent(found.percent)}   100·(exp(b) − 1), the change in the geometric mean"]
+    said = [
+        f"{signed_percent(found.percent)}   100·(exp(b) − 1), of the geometric mean; of the mean in a Poisson model"
+    ]
     if found.interval is not None:
         said.append(f"{interval(*found.interval, '%')}   its 95 % interval")
     if found.kennedy_percent is not None:

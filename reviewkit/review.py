@@ -73,6 +73,8 @@ class Review:
 
 def begin(folder: Path, inputs: Mapping[Input, Path]) -> tuple[CaseFolder, tuple[str, ...]]:
     """Make or open the case and note what it is given; nothing is read yet. Also what to say about the place."""
+    for path in inputs.values():
+        casefolder.check_given(path)
     warnings = safekeeping.place_warnings(folder.absolute())
     case = casefolder.make_case(folder)
     with casefolder.working_in(case):

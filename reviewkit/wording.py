@@ -167,6 +167,12 @@ def joined(items: Iterable[str], last: str = "and") -> str:
     return f" {last} ".join([", ".join(all_items[:-1]), all_items[-1]]) if len(all_items) > 1 else "".join(all_items)
 
 
+def some_of(items: Sequence[str], most: int = 5) -> str:
+    """`a, b and c`; of more than `most` the first, and how many more there are."""
+    left = len(items) - most
+    return joined(items if left <= 1 else (*items[:most], f"{left} more"))
+
+
 def sentence(words: str) -> str:
     """The words with a capital letter and a full stop."""
     tidy = words.strip()

@@ -514,3 +514,9 @@ def test_one_rule_is_told_in_the_singular(tmp_path, capsys):
     shutil.copy(rules_folder() / "outcome" / "zeros-dropped.toml", tmp_path / "topic" / "a-rule-of-our-own.toml")
     assert run(["rules", "check", str(tmp_path)]) == 0
     assert capsys.readouterr().out.startswith("1 rule read, ")
+
+
+def test_an_input_that_is_not_there_leaves_no_case_behind(tmp_path, capsys):
+    assert run(["begin", str(tmp_path / "case"), "--data", str(tmp_path / "nope.csv")]) == 2
+    assert "nope.csv" in capsys.readouterr().err
+    assert not (tmp_path / "case").exists()

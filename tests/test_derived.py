@@ -235,3 +235,16 @@ def test_tests_of_both_forms_are_told_alike_and_a_lottery_keeps_the_ratio() -> N
     assert derived("form.in_words", **quiet).count("does not speak") == 2
     assert "lottery" not in derived("form.in_words", **quiet)
     assert derived("form.in_words", form__alternative_p=0.3) is None
+
+
+def test_every_step_clearly_off_zero_is_told_and_the_rest_said_to_be_left_out() -> None:
+    steps = {"step__weighting": 0.01, "step__zeros": -0.35, "step__amounts": -0.01, "step__constant": 0.006}
+    off = {"step__weighting_off_zero": "no", "step__zeros_off_zero": "yes", "step__amounts_off_zero": "no"}
+    told = derived("step.in_words", **steps, **off, step__constant_off_zero="yes")
+    assert told == (
+        "-0.350 from observations with a zero outcome and 0.00600 from what was added to the outcome; the other parts "
+        "are not clearly off zero"
+    )
+    assert (
+        derived("step.in_words", **steps, **{**off, "step__zeros_off_zero": "no"}, step__constant_off_zero="no") is None
+    )

@@ -50,8 +50,11 @@ def infer(fit: Fit, errors: Errors) -> Inference:
         factor, df = _cluster_factor(errors, n, k, groups), groups - 1.0
         covariance = factor * _sandwich(fit, _cluster_meat(fit))
     on_x = fit.sample.basis.map @ covariance @ fit.sample.basis.map.T
+    variances = np.diag(on_x)
+    if not (variances >= 0).all():
+        raise NotEstimable("standard errors", "some variances come out negative: the covariates are nearly collinear")
     normal = fit.estimator != "ols"
-    return Inference(np.sqrt(np.diag(on_x)), None if normal else df, factor, errors.type or "classical")
+    return Inference(np.sqrt(variances), None if normal else df, factor, errors.type or "classical")
 
 
 def _classical(fit: Fit) -> Array:

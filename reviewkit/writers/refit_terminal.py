@@ -54,14 +54,23 @@ def _models(found: Reestimation) -> str:
     how = "least squares" if table.estimator == "ols" else str(table.estimator)
     return (
         f"{how} on {clean(table.outcome)}, {number(table.observations)} observations, "
-        f"errors {clean(errors_text(table.errors, table.clusters))}{beside}"
+        f"errors {clean(errors_text(table.errors, table.clusters))}{beside}{_sample(found)}"
     )
+
+
+def _sample(found: Reestimation) -> str:
+    """Weights, exposure and sample condition, where there are any."""
+    spec = found.specification
+    parts = [f"{spec.weights.kind} weights {spec.weights.column}"] if spec.weights else []
+    parts += [f"exposure {spec.exposure}"] if spec.exposure else []
+    parts += [f"where {spec.where}"] if spec.where is not None else []
+    return "".join(f", {clean(part)}" for part in parts)
 
 
 def _table(to: Console, found: Reestimation, focus: tuple[str, ...], plain: bool) -> None:
     names = [*focus, *(row.name for row in found.submitted.terms if row.name not in focus)][:MOST_TERMS]
     shown = Table(box=None if plain else SIMPLE_HEAD, pad_edge=False, show_edge=False)
-    shown.add_column("term")
+    shown.add_column("term", overflow="fold")
     models = ("submitted", "alternative (Poisson)") if found.alternative else ("submitted",)
     for model in models:
         shown.add_column(model, justify="right")
