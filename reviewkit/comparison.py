@@ -10,7 +10,7 @@ from dataclasses import dataclass, replace
 from enum import StrEnum
 
 from reviewkit.implied import Scale
-from reviewkit.joint import VERY_FEW_ROWS, Joint
+from reviewkit.joint import FEW_ROWS, VERY_FEW_ROWS, Joint
 
 MATERIAL_SHARE = 0.05
 """Default material share; common practice, no source."""
@@ -146,11 +146,17 @@ def _verdict(joint: Joint, share: float, same: bool, cautions: Cautions) -> tupl
         return None, "both models give the same number by construction"
     if not cautions.reproduced:
         return None, "the printed figures were not reproduced"
+    if _not_resampled(joint):
+        return Verdict.UNSETTLED, "few rows carry the error, and the model is too large to resample"
     if cautions.few_clusters:
         return Verdict.UNSETTLED, cautions.few_clusters
     if differs(joint, share):
         return Verdict.DIFFERS, None
     return (Verdict.AGREES, None) if agrees(joint, share) else (Verdict.UNSETTLED, None)
+
+
+def _not_resampled(joint: Joint) -> bool:
+    return joint.method == "robust" and joint.effective < FEW_ROWS
 
 
 def _weakness(joint: Joint) -> str | None:

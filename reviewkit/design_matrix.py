@@ -23,7 +23,7 @@ CONSTANT = "(constant)"
 _EXACT = 2**53  # whole numbers up to here are told apart as floats
 LARGEST = 1e100
 """Size of a value beyond which its square could no longer be held."""
-MOST_LEVELS = 100
+MOST_LEVELS = 1000
 """Classes that factor() may have before it must be absorbed instead."""
 
 

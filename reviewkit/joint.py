@@ -29,6 +29,9 @@ FEW_ROWS = 20.0
 VERY_FEW_ROWS = 10.0
 """Effective rows under which a conclusion is marked weak."""
 DRAWS = 999
+MOST_RESAMPLED = 60
+"""Coefficients beyond which a model is not resampled; with few effective rows nothing is concluded then."""
+_MOST_CELLS = 100_000_000  # of all clusters' cross-products together, 0.8 GB
 _BLOCK_CELLS = 32_000  # of a matrix with a column a row held at once, so that it stays in cache
 _SETTLED = 1e-10
 _MOST_STEPS = 25
@@ -151,7 +154,8 @@ def _by_rows(submitted: Side, alternative: Side, rows: int, seed: int, progress:
     effective = float(multiplicity @ difference**2) ** 2 / fourth if fourth > 0 else float("inf")
     df = min(submitted.fit.degrees_of_freedom, alternative.fit.degrees_of_freedom)
     joint = Joint(numbers[0], numbers[1], covariance, df, "robust", effective)
-    if effective >= FEW_ROWS:
+    widest = max(len(side.fit.coefficients) for side in (submitted, alternative))
+    if effective >= FEW_ROWS or widest > MOST_RESAMPLED:
         return joint
     draws, failed = _bootstrap((submitted, alternative), _observations(difference, multiplicity), seed, progress)
     return replace(joint, method="bootstrap-t", draws=draws, failed_draws=failed)
@@ -304,6 +308,9 @@ def coefficients_without(fit: Fit, codes: Codes, groups: int, rests_on: Callable
     Raises:
         NotEstimable: The model, or the number that rests on those rows, cannot be had without some cluster.
     """
+    if groups * len(fit.coefficients) ** 2 > _MOST_CELLS:
+        large = f"{len(fit.coefficients):,} coefficients and {groups:,} clusters are too many for it"
+        raise NotEstimable("leaving out each cluster", large, remedy="Use fewer classes of factors")
     grams, whole = _cluster_grams(fit, codes, groups)
     inverses, free = _inverses(whole - grams, np.sqrt(np.diag(whole)))
     for group, directions in free.items():

@@ -273,3 +273,24 @@ def test_frequency_weights_describe_observations() -> None:
     described = [{row[0]: row[1] for row in each.exhibits[0].rows} for each in (weighted, plain)]
     for name in ("mean", "zeros, percent", "median", "treated = 1: mean", "treated = 0: rows"):
         assert described[0][name] == pytest.approx(described[1][name])
+
+
+def test_a_model_too_large_to_resample_concludes_nothing_where_few_rows_carry_the_error() -> None:
+    random = np.random.default_rng(2)
+    rows = 700
+    y = random.lognormal(0, 1, rows)
+    y[0] = 900.0
+    data = table(y=y, group=np.tile([0.0, 1.0], rows // 2), class_=np.repeat(np.arange(70), 10))
+    model = {"terms": ["group", "factor(class_)"], "focus": ["group"]}
+    found = refit(data, outcome={"column": "y", "transform": "log"}, model=model, errors={"kind": "robust"})
+    first = found.comparison[0]
+    assert (first.method, first.conclusion) == ("robust", "unsettled")
+    assert "too large to resample" in (first.why or "")
+
+
+def test_too_many_clusters_and_coefficients_to_leave_out_are_said(monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setattr("reviewkit.joint._MOST_CELLS", 99)
+    tables: dict[str, Any] = {"outcome": {"column": "y", "transform": "log_plus"}, "model": {"terms": ["treated"]}}
+    first = refit(amounts(), **tables, errors={"kind": "cluster", "by": ["cluster"]}).comparison[0]
+    assert first.conclusion is None
+    assert "too many" in (first.why or "")

@@ -16,6 +16,9 @@ from reviewkit.specification import ErrorKind, Errors
 Array = npt.NDArray[np.float64]
 
 
+_ROUNDING = 1e-10  # share of the largest variance that a class with a single row may miss zero by
+
+
 @dataclass(frozen=True, slots=True)
 class Inference:
     """Errors of a model's own table, by its stated convention."""
@@ -51,10 +54,10 @@ def infer(fit: Fit, errors: Errors) -> Inference:
         covariance = factor * _sandwich(fit, _cluster_meat(fit))
     on_x = fit.sample.basis.map @ covariance @ fit.sample.basis.map.T
     variances = np.diag(on_x)
-    if not (variances >= 0).all():
+    if not (variances >= -_ROUNDING * variances.max()).all():
         raise NotEstimable("standard errors", "some variances come out negative: the covariates are nearly collinear")
     normal = fit.estimator != "ols"
-    return Inference(np.sqrt(variances), None if normal else df, factor, errors.type or "classical")
+    return Inference(np.sqrt(np.maximum(variances, 0)), None if normal else df, factor, errors.type or "classical")
 
 
 def _classical(fit: Fit) -> Array:
