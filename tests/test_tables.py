@@ -319,4 +319,5 @@ def test_a_hint_from_a_name_is_worded_as_a_guess() -> None:
 def test_no_warning_leaves_the_reader(tmp_path) -> None:
     with warnings.catch_warnings():
         warnings.simplefilter("error")
-        describe_columns(read_table(ferries(tmp_path, version=118)))
+        table = read_table(ferries(tmp_path, version=118))
+        assert [each.name for each in describe_columns(table)] == list(table.frame.columns)

@@ -41,7 +41,7 @@ def _rows(table: ModelTable, name: str) -> list[tuple[Cell, ...]]:
         return []
     found = row.readings
     low, high = found.interval or (None, None)
-    model = f"least squares on {table.outcome}" if table.estimator == "ols" else f"{table.estimator}, {table.outcome}"
+    model = f"least squares on {table.outcome}" if table.estimator == "ols" else f"Poisson, mean of {table.outcome}"
     return [
         (
             model,
